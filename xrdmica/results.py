@@ -1,0 +1,205 @@
+"""The result records: what the program promises to write. The JSON Schema is made from these classes."""
+
+from __future__ import annotations
+
+from typing import Literal
+
+from pydantic import BaseModel, ConfigDict, Field
+
+__all__ = [
+    "Alternative", "Curve", "Evidence", "Findings", "FitQuality", "FittedParameter", "GroupWeight", "Mark",
+    "PhaseFinding", "PhaseWeight", "Proportions", "SampleResult", "ScanSummary", "Status", "Swelling", "UnassignedLine",
+]  # fmt: skip
+
+Status = Literal["present", "trace", "possible", "not_detected"]
+Basis = Literal["sheet silicates of the oriented mount", "crystalline part", "whole sample"]
+
+
+class Record(BaseModel):
+    """Frozen record; unknown keys are an error so that a typing mistake is not lost."""
+
+    model_config = ConfigDict(frozen=True, extra="forbid")
+
+
+class ScanSummary(Record):
+    """One scan as it was used."""
+
+    label: str = Field(description="treatment, distinct within the sample")
+    file: str
+    mount: Literal["oriented", "random"]
+    treatment: str
+    radiation: str
+    radiation_origin: str
+    two_theta_range: tuple[float, float] = Field(description="degree")
+    points: int
+    displacement_mm: float | None = Field(default=None, description="specimen displacement found by the fit")
+    shift_degree: float | None = Field(default=None, description="angle shift found, at low angles")
+    notes: tuple[str, ...] = ()
+
+
+class Evidence(Record):
+    """One fact for or against a phase."""
+
+    kind: Literal["line", "missing line", "behaviour", "intensity", "fit", "overlap", "not measured"]
+    text: str = Field(description="the fact in plain words")
+    weight: float = Field(description="positive speaks for the phase, negative against it")
+    scan: str = Field(default="", description="label of the scan, empty when it concerns the sample")
+    two_theta: float | None = Field(default=None, description="observed position, degree")
+    d_observed: float | None = Field(default=None, description="angstrom")
+    d_error: float | None = Field(default=None, description="standard error, angstrom")
+    order: int | None = Field(default=None, description="basal order l of 00l")
+    d_expected: float | None = Field(default=None, description="angstrom")
+
+
+class Alternative(Record):
+    """Another phase that the scans cannot tell from this one."""
+
+    phase: str
+    name: str
+    told_by: str = Field(description="the measurement that would tell")
+
+
+class PhaseFinding(Record):
+    """The decision on one phase."""
+
+    phase: str
+    name: str
+    group: str
+    status: Status
+    reason: str = Field(description="the decision in one sentence")
+    evidence: tuple[Evidence, ...] = ()
+    alternatives: tuple[Alternative, ...] = ()
+    states: dict[str, str] = Field(default_factory=dict, description="scan label -> state of the phase in that scan")
+    basal_spacing: float | None = Field(default=None, description="air-dried or untreated, angstrom")
+
+
+class UnassignedLine(Record):
+    """An observed line that no accepted phase explains."""
+
+    scan: str
+    two_theta: float
+    d_spacing: float
+    height_sigma: float = Field(description="height above background in standard errors")
+    suggestions: tuple[str, ...] = ()
+
+
+class Swelling(Record):
+    """The verdict on swelling layers."""
+
+    verdict: Literal["yes", "no", "cannot tell"]
+    reason: str
+    expandable_percent: float | None = Field(default=None, description="expandable layers, wt % of the sheet silicates")
+    low95: float | None = None
+    high95: float | None = None
+    measure_next: str = ""
+
+
+class Findings(Record):
+    """What is in the sample, with the evidence."""
+
+    sample: str
+    phases: tuple[PhaseFinding, ...]
+    unassigned: tuple[UnassignedLine, ...] = ()
+    measure_next: tuple[str, ...] = Field(default=(), description="measurements that would settle what is open")
+    notes: tuple[str, ...] = ()
+
+    def of_status(self, *status: Status) -> tuple[PhaseFinding, ...]:
+        """The findings with one of the given statuses."""
+        return tuple(f for f in self.phases if f.status in status)
+
+    def get(self, phase: str) -> PhaseFinding | None:
+        """The finding on one phase id, if it was considered."""
+        return next((f for f in self.phases if f.phase == phase), None)
+
+
+class PhaseWeight(Record):
+    """One row of the proportions: a phase that was considered."""
+
+    phase: str
+    name: str
+    group: str
+    status: Status
+    weight_percent: float | None = None
+    low95: float | None = None
+    high95: float | None = None
+    standard_error: float | None = None
+    detection_limit: float | None = None
+
+
+class GroupWeight(Record):
+    """Total of a group of phases."""
+
+    group: str
+    status: Status
+    weight_percent: float | None = None
+    low95: float | None = None
+    high95: float | None = None
+
+
+class FittedParameter(Record):
+    """A parameter that the fit moved."""
+
+    name: str
+    value: float
+    standard_error: float | None = None
+    unit: str = ""
+    at_limit: bool = False
+
+
+class FitQuality(Record):
+    """How well the calculated scans match."""
+
+    reduced_chi_square: float | None = None
+    profile_residual_percent: float | None = Field(default=None, description="weighted profile residual")
+    evaluations: int = 0
+    converged: bool = False
+    message: str = ""
+
+
+class Proportions(Record):
+    """Weight percent with intervals, dry basis (structural OH counts, interlayer water and glycol do not)."""
+
+    sample: str
+    basis: Basis
+    phases: tuple[PhaseWeight, ...]
+    groups: tuple[GroupWeight, ...] = ()
+    parameters: tuple[FittedParameter, ...] = ()
+    quality: FitQuality = FitQuality()
+    notes: tuple[str, ...] = ()
+
+
+class Mark(Record):
+    """A calculated reflection for the figures."""
+
+    phase: str
+    label: str = Field(description="order or hkl, such as 001")
+    two_theta: float
+    d_spacing: float
+
+
+class Curve(Record):
+    """Curves of one scan, for figures and pages."""
+
+    scan: str
+    two_theta: tuple[float, ...]
+    observed: tuple[float, ...]
+    calculated: tuple[float, ...] = ()
+    background: tuple[float, ...] = ()
+    contributions: dict[str, tuple[float, ...]] = Field(default_factory=dict)
+    marks: tuple[Mark, ...] = ()
+
+
+class SampleResult(Record):
+    """Everything known about one sample: the content of ``<sample>.json``."""
+
+    sample: str
+    version: str
+    scans: tuple[ScanSummary, ...]
+    findings: Findings
+    proportions: Proportions
+    swelling: Swelling
+    curves: tuple[Curve, ...] = ()
+    details: dict[str, str] = Field(default_factory=dict, description="further columns of the sample sheet")
+    settings: dict[str, str] = Field(default_factory=dict, description="settings that took effect")
+    notes: tuple[str, ...] = ()
+    cautions: tuple[str, ...] = ()
