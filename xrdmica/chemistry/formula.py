@@ -3,12 +3,15 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass, replace
+from dataclasses import dataclass, field, replace
 from types import MappingProxyType
-from typing import Literal
+from typing import TYPE_CHECKING, Literal
 
-from xrdmica.chemistry.ions import charge_of, mass_of
+from xrdmica.chemistry.ions import GROUP_IONS, charge_of, element_of, is_neutral, mass_of
 from xrdmica.errors import ChemistryError
+
+if TYPE_CHECKING:
+    from xrdmica.chemistry.classify import Character, Group
 
 __all__ = ["SITES", "LayerType", "SiteFormula", "SiteName"]
 
@@ -30,7 +33,7 @@ class SiteFormula:
     water : float
         Molecules of water per formula unit, not part of the dry mass.
     notes : tuple of str
-        What reading the formula had to decide.
+        What reading the formula had to decide; they do not count when formulas are compared.
     """
 
     layer_type: LayerType
@@ -39,7 +42,7 @@ class SiteFormula:
     tetrahedral: Mapping[str, float]
     anions: Mapping[str, float]
     water: float = 0.0
-    notes: tuple[str, ...] = ()
+    notes: tuple[str, ...] = field(default=(), compare=False)
 
     def __post_init__(self) -> None:
         for site in SITES:
@@ -47,6 +50,61 @@ class SiteFormula:
 
     def __reduce__(self) -> tuple[object, ...]:
         return (type(self), (self.layer_type, *(dict(self.site(s)) for s in SITES), self.water, self.notes))
+
+    @classmethod
+    def parse(cls, text: str, tolerance: float = 0.05) -> SiteFormula:
+        """Read a formula as mineralogists write it, and check it.
+
+        Brackets, commas, spaces, raised and lowered digits, charges (``Fe3+0.5``, ``Fe(III)``), vacancies, hydrate water and
+        named sites (``I: K | M: Al2 | T: Si3 Al | A: O10 (OH)2``) are understood. Without brackets the tetrahedral site is
+        filled with Si, then Al. Fe without a charge is Fe2+ where that balances. What had to be decided is in `notes`.
+
+        Parameters
+        ----------
+        text : str
+            One formula, such as ``K0.85Na0.10(Al1.90Mg0.10)(Si3.2Al0.8)O10(OH)2``.
+        tolerance : float
+            Misfit allowed by `check`.
+
+        Returns
+        -------
+        SiteFormula
+            One formula unit on O10(OH)2, O5(OH)4 or O10(OH)8, whatever cell the text was written for.
+
+        Raises
+        ------
+        ChemistryError
+            If the text is no formula, leaves amounts or charges open, or fails `check`.
+        """
+        from xrdmica.chemistry.notation import parse_formula
+
+        return parse_formula(text, tolerance)
+
+    def check(self, tolerance: float = 0.05) -> None:
+        """Refuse a formula that cannot be that of a sheet silicate.
+
+        Parameters
+        ----------
+        tolerance : float
+            Misfit allowed in cation sums [apfu] and in the charge balance [charges per formula unit].
+
+        Raises
+        ------
+        ChemistryError
+            One sentence that says by how much it misses and where.
+        """
+        from xrdmica.chemistry.checks import check_formula
+
+        check_formula(self, tolerance)
+
+    def text(self) -> str:
+        """Canonical text, which `parse` reads back to an equal formula; zero amounts are left out."""
+        from xrdmica.chemistry.notation import write_formula
+
+        return write_formula(self)
+
+    def __str__(self) -> str:
+        return self.text()
 
     def site(self, name: SiteName) -> Mapping[str, float]:
         """The content of one site."""
@@ -64,7 +122,7 @@ class SiteFormula:
     @property
     def layer_charge(self) -> float:
         """Negative charge of the layer per formula unit, as a positive number: anions minus T and M cations."""
-        return -(self.site_charge("anions") + self.site_charge("octahedral") + self.site_charge("tetrahedral"))
+        return 0.0 - (self.site_charge("anions") + self.site_charge("octahedral") + self.site_charge("tetrahedral"))
 
     @property
     def imbalance(self) -> float:
@@ -73,8 +131,40 @@ class SiteFormula:
 
     @property
     def molar_mass(self) -> float:
-        """Dry mass per formula unit [g/mol]; interlayer water is left out."""
-        return sum(n * mass_of(ion) for site in SITES for ion, n in self.site(site).items() if ion != "H2O")
+        """Dry mass per formula unit [g/mol]; interlayer water, glycol and glycerol are left out."""
+        return sum(n * mass_of(ion) for site in SITES for ion, n in self.site(site).items() if not is_neutral(ion))
+
+    @property
+    def octahedral_character(self) -> Character:
+        """``"dioctahedral"``, ``"trioctahedral"`` or, for chlorites with one sheet of each kind, ``"di,trioctahedral"``."""
+        from xrdmica.chemistry.classify import octahedral_character
+
+        return octahedral_character(self)
+
+    @property
+    def group(self) -> Group:
+        """Group of sheet silicates, by layer type, layer charge and interlayer cations."""
+        from xrdmica.chemistry.classify import group_of
+
+        return group_of(self)
+
+    def oxides(self) -> dict[str, float]:
+        """Weight percent of oxides in the dry formula, see `xrdmica.chemistry.oxides.oxide_percent`."""
+        from xrdmica.chemistry.oxides import oxide_percent
+
+        return oxide_percent(self)
+
+    def element_counts(self, with_water: bool = False) -> dict[str, float]:
+        """Atoms of every element per formula unit; interlayer molecules only `with_water`."""
+        counts: dict[str, float] = {}
+        everything = [(ion, n) for site in SITES for ion, n in self.site(site).items() if with_water or not is_neutral(ion)]
+        if with_water and self.water:
+            everything.append(("H2O", self.water))
+        for ion, n in everything:
+            atoms = GROUP_IONS[ion][1] if ion in GROUP_IONS else {element_of(ion): 1}
+            for element, each in atoms.items():
+                counts[element] = counts.get(element, 0.0) + n * each
+        return {element: n for element, n in counts.items() if n}
 
     def exchanged(self, site: SiteName, out: str, into: str, amount: float) -> SiteFormula:
         """The formula with `amount` atoms of `out` on a site replaced by `into`.
