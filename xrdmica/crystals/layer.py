@@ -2,12 +2,17 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
 
-__all__ = ["Layer"]
+from xrdmica.chemistry.formula import SiteFormula
+from xrdmica.crystals.library import Phase, Plane, State
+from xrdmica.errors import StructureError
+
+__all__ = ["Layer", "build_layer", "formula_with"]
 
 
 @dataclass(frozen=True, eq=False)
@@ -51,3 +56,100 @@ class Layer:
     def _count_at(self, ion: str, height: float) -> float:
         here = [i == ion and abs(z - height) < 1e-6 for i, z in zip(self.ions, self.z, strict=True)]
         return float(self.counts[np.array(here, dtype=bool)].sum())
+
+
+def formula_with(phase: Phase, exchanges: Mapping[str, float]) -> SiteFormula:
+    """The phase's formula with its exchange variables set.
+
+    Parameters
+    ----------
+    phase : Phase
+        A sheet silicate with a formula of its own.
+    exchanges : mapping
+        Variable id -> amount of the entering ion [atoms per formula unit].
+
+    Raises
+    ------
+    StructureError
+        If the phase has no such variable or the amount does not fit on the site.
+    """
+    formula = phase.site_formula
+    for name, amount in exchanges.items():
+        variable = phase.variable(name)
+        if variable is None or variable.site is None or variable.out is None or variable.into is None:
+            raise StructureError(f"{phase.id} has no exchange variable {name!r}", fix="see `xrdmica phases --show`")
+        site = formula.site(variable.site)
+        change = amount - site.get(variable.into, 0.0)
+        out, into = (variable.out, variable.into) if change >= 0 else (variable.into, variable.out)
+        if site.get(out, 0.0) < abs(change) - 1e-9:
+            raise StructureError(
+                f"{phase.id}: {name} = {amount:g} does not fit on the {variable.site} site",
+                fix=f"keep it between {variable.minimum:g} and {variable.maximum:g}",
+            )
+        formula = formula.exchanged(variable.site, out, into, abs(change))
+    return formula
+
+
+def build_layer(
+    phase: Phase,
+    state: State,
+    *,
+    exchanges: Mapping[str, float] | None = None,
+    spacing: float | None = None,
+    one_sided: bool = False,
+) -> Layer:
+    """Atoms on a line for a phase in one state.
+
+    Parameters
+    ----------
+    phase : Phase
+        A phase with a layer of its own.
+    state : State
+        One of its states that is not lost.
+    exchanges : mapping, optional
+        Exchange variables that differ from the file.
+    spacing : float, optional
+        Basal spacing [angstrom] in place of the state's usual one; the interlayer content moves with its middle.
+    one_sided : bool
+        Put all of the interlayer above the layer instead of half on either side: what interstratified stacks need,
+        where the interlayer below belongs to another layer.
+
+    Returns
+    -------
+    Layer
+
+    Raises
+    ------
+    StructureError
+        If the phase has no layer or the state gives no basal lines.
+    """
+    if phase.layer is None or state.lost or state.spacing is None:
+        raise StructureError(f"{phase.id} has no basal lines in state {state.id!r}", fix="leave it out of this scan")
+    formula = formula_with(phase, exchanges or {})
+    distance = state.spacing if spacing is None else spacing
+    rows: list[tuple[float, float, str, float]] = []
+    for plane in (*phase.layer.planes, *state.planes):
+        content = _content(plane, formula)
+        for height, share in _heights(plane, distance, phase.layer.mirrored, one_sided):
+            rows += [(height, share * count, ion, plane.b_iso) for ion, count in content.items() if count > 0]
+    z, counts, ions, b_iso = zip(*rows, strict=True)
+    return Layer(np.array(z), np.array(counts), ions, np.array(b_iso), distance, phase.area, formula.molar_mass)
+
+
+def _content(plane: Plane, formula: SiteFormula) -> Mapping[str, float]:
+    if plane.role is None:
+        return plane.ions
+    return {ion: plane.share * count for ion, count in formula.site(plane.role).items()}
+
+
+def _heights(plane: Plane, spacing: float, mirrored: bool, one_sided: bool) -> list[tuple[float, float]]:
+    """Heights of a plane with the factor on its listed counts."""
+    if plane.z is not None:
+        twin = mirrored and plane.z > 0
+        return [(plane.z, 1.0), (-plane.z, 1.0)] if twin else [(plane.z, 1.0)]
+    below = plane.below_middle or 0.0
+    upper = spacing / 2 - below
+    if not mirrored:
+        return [(upper, 1.0)]
+    # below the middle, and the mirror image: above the middle of the next interlayer down, or of this one when one-sided
+    return [(upper, 1.0), (upper + 2 * below if one_sided else -upper, 1.0)]

@@ -181,6 +181,9 @@ class Phase(_Table):
     stack: Stack | None = None
     variables: tuple[Variable, ...] = ()
     look_alikes: tuple[LookAlike, ...] = ()
+    occurrence: Literal["common", "rare"] = Field(
+        default="common", description="in clay fractions and soils; a rare phase has to be better supported than a common one"
+    )
     d060: float | None = Field(default=None, description="angstrom")
     cautions: tuple[str, ...] = ()
     sources: tuple[str, ...] = Field(min_length=1)

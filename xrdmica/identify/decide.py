@@ -1,0 +1,267 @@
+"""From scans to findings: which phases are present, which the scans cannot tell, and what would tell."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass, replace
+from itertools import combinations
+
+from xrdmica.crystals.library import Phase, all_phases, load_phase
+from xrdmica.diffraction.optics import Instrument
+from xrdmica.identify.align import align
+from xrdmica.identify.candidates import Hopeful, hopefuls
+from xrdmica.identify.evidence import Ledger, ledger_for
+from xrdmica.identify.search import KEEP, Arena, Selection, build_arena, refined, select, settle, swapped
+from xrdmica.identify.strangers import with_strangers
+from xrdmica.identify.unassigned import unassigned_lines
+from xrdmica.identify.words import absent_reason, kept_reason, next_measurements, sample_notes
+from xrdmica.matching.linear import tied_fit
+from xrdmica.matching.prepare import prepare
+from xrdmica.results import Alternative, Findings, PhaseFinding, Status
+from xrdmica.scans.scan import Sample
+
+__all__ = ["Examination", "examine", "identify"]
+
+SWAP = 100.0  # rise of chi-square below which another phase would do as well
+_TRACE = 0.025  # share of the sheet silicates below which a phase is called a trace
+_NEIGHBOUR = 0.45  # angstrom
+
+
+@dataclass(frozen=True, eq=False)
+class Examination:
+    """Everything that came out of the comparison, for the estimate that follows.
+
+    Attributes
+    ----------
+    sample : Sample
+    arena : Arena
+        Scans and candidates as refined.
+    selection : Selection
+    findings : Findings
+    """
+
+    sample: Sample
+    arena: Arena
+    selection: Selection
+    findings: Findings
+
+
+def _without_rare(arena: Arena) -> Arena:
+    """The arena without rare phases: what is usual has the first say in placing the scans."""
+    keep = [i for i, c in enumerate(arena.candidates) if load_phase(c.phase).occurrence == "common"]
+    return _part(arena, keep)
+
+
+def _part(arena: Arena, keep: Sequence[int]) -> Arena:
+    return Arena(
+        arena.prepared,
+        tuple(arena.candidates[i] for i in keep),
+        tuple(a[:, list(keep)] for a in arena.columns),
+        {f: tuple(s.subset(keep) for s in systems) for f, systems in arena.systems.items()},
+    )
+
+
+def _compare(sample: Sample, phases: Sequence[Phase], instrument: Instrument) -> tuple[tuple[Hopeful, ...], Arena, Selection]:
+    """Candidates, coarse choice among common phases, refinement, then the choice among all."""
+    prepared = prepare(sample, instrument)
+    considered = hopefuls(phases, prepared)
+    prepared = with_strangers(considered, align(considered, prepared))
+    candidates = settle(considered, prepared)
+    arena = build_arena(candidates, prepared)
+    usual = _without_rare(arena)
+    selection = select(usual, coarse=True)
+    placed = {c.phase: c for c in usual.candidates}
+    prepared, changed = refined(usual, selection)
+    placed.update({c.phase: c for c in changed})
+    rest = [placed.get(c.phase, c) for c in candidates]
+    arena = build_arena(rest, prepared)
+    chosen = select(arena)
+    first = {usual.candidates[a].phase for a in selection.active}
+    if {arena.candidates[a].phase for a in chosen.active} != first:
+        prepared, rest_again = refined(arena, chosen, rounds=5)
+        arena = build_arena(rest_again, prepared)
+        chosen = select(arena)
+    return considered, arena, _only_visible(arena, _usual_first(arena, _simplified(arena, chosen)), sample.labels)
+
+
+def _usual_first(arena: Arena, selection: Selection) -> Selection:
+    """Put a common phase in place of a rare one wherever it does nearly as well."""
+    for place in selection.active:
+        if load_phase(arena.candidates[place].phase).occurrence == "common":
+            continue
+        common, _ = _rivals(arena, selection, place)
+        costs = {i: swapped(arena, selection, place, i) for i, c in enumerate(arena.candidates) if c.phase in common}
+        if costs:
+            best = min(costs, key=lambda i: costs[i])
+            return _usual_first(arena, _among(arena, [*(a for a in selection.active if a != place), best]))
+    return selection
+
+
+def _only_visible(arena: Arena, selection: Selection, labels: Sequence[str]) -> Selection:
+    """Drop what only fills in under the lines of other phases: it cannot be claimed, and the rest must do without it."""
+    hidden = [a for a in selection.active if ledger_for(arena, selection, a, labels).clear_lines == 0]
+    if not hidden:
+        return selection
+    weakest = min(hidden, key=lambda a: float(selection.need[a].sum()))
+    return _only_visible(arena, _among(arena, [a for a in selection.active if a != weakest]), labels)
+
+
+def _simplified(arena: Arena, selection: Selection) -> Selection:
+    """Put one phase in place of two neighbours where that costs next to nothing."""
+    others = [i for i in range(len(arena.candidates)) if i not in selection.active]
+    for one, two in combinations(selection.active, 2):
+        if not _neighbours(arena, one, two):
+            continue
+        for place in others:
+            if not _neighbours(arena, one, place):
+                continue
+            active = [a for a in selection.active if a not in (one, two)] + [place]
+            fit = tied_fit([s.subset(active) for s in arena.systems[selection.factor]])
+            if fit.chi_square - selection.fit.chi_square < KEEP * selection.noise:
+                return _simplified(arena, _among(arena, active))
+    return selection
+
+
+def _among(arena: Arena, places: Sequence[int]) -> Selection:
+    """The selection from some candidates only, with places of the whole arena."""
+    part = select(_part(arena, places))
+    return replace(
+        part,
+        active=tuple(places[a] for a in part.active),
+        need={places[a]: need for a, need in part.need.items()},
+    )
+
+
+def _neighbours(arena: Arena, one: int, two: int) -> bool:
+    """Whether two candidates have their first lines at nearly the same place in some scan."""
+    pairs = zip(arena.candidates[one].components, arena.candidates[two].components, strict=True)
+    return any(
+        a is not None and b is not None and bool(a.spacings and b.spacings) and abs(a.spacings[0] - b.spacings[0]) < _NEIGHBOUR
+        for a, b in pairs
+    )
+
+
+def _rivals(arena: Arena, selection: Selection, place: int) -> tuple[tuple[str, ...], tuple[str, ...]]:
+    """Phases that would do nearly as well as a kept one: (common, rare)."""
+    common: list[str] = []
+    rare: list[str] = []
+    look_alikes = {x.id for x in load_phase(arena.candidates[place].phase).look_alikes}
+    for other in range(len(arena.candidates)):
+        if other in selection.active:
+            continue
+        name = arena.candidates[other].phase
+        if name not in look_alikes and not _neighbours(arena, place, other):
+            continue
+        if swapped(arena, selection, place, other) < SWAP * selection.noise:
+            (common if load_phase(name).occurrence == "common" else rare).append(name)
+    return tuple(common), tuple(rare)
+
+
+def _status(phase: Phase, ledger: Ledger, rivals: Sequence[str], share: float, conditions: int) -> Status:
+    convincing = ledger.clear_lines >= 2 or (
+        ledger.clear_lines == 1 and (ledger.moved or (ledger.shared_lines >= 1 and conditions > 1))
+    )
+    if not convincing or ledger.missing_lines > max(1, ledger.clear_lines // 2) or rivals:
+        return "possible"
+    return "trace" if phase.is_sheet_silicate and share < _TRACE else "present"
+
+
+def _told_by(phase: str, other: str) -> str:
+    for a, b in ((phase, other), (other, phase)):
+        for look in load_phase(a).look_alikes:
+            if look.id == b:
+                return look.told_by
+    return "a random powder with the 060 region, and a chemical analysis"
+
+
+def _kept_finding(arena: Arena, selection: Selection, place: int, labels: Sequence[str], share: float) -> PhaseFinding:
+    candidate = arena.candidates[place]
+    phase = load_phase(candidate.phase)
+    ledger = ledger_for(arena, selection, place, labels)
+    common, rare = _rivals(arena, selection, place)
+    conditions = len({item.scan.treatment.name for item in arena.prepared})
+    status = _status(phase, ledger, common, share, conditions)
+    alternatives = tuple(
+        Alternative(phase=name, name=load_phase(name).name, told_by=_told_by(phase.id, name)) for name in (*common, *rare)
+    )
+    states = {labels[k]: c.label for k, c in enumerate(candidate.components) if c is not None and c.states}
+    spacing = next((c.spacings[0] for c in candidate.components if c is not None and c.spacings and c.fraction is None), None)
+    reason = kept_reason(phase, status, ledger, [load_phase(name).name for name in common])
+    return PhaseFinding(
+        phase=phase.id, name=phase.name, group=phase.group, status=status, reason=reason, evidence=ledger.evidence,
+        alternatives=alternatives, states=states, basal_spacing=None if spacing is None else round(spacing, 4),
+    )  # fmt: skip
+
+
+def _other_finding(one: Hopeful, kept: Sequence[PhaseFinding], labels: Sequence[str]) -> PhaseFinding:
+    """The finding on a phase that was not kept: an alternative of a kept one, or not detected."""
+    phase = one.phase
+    stands_for = [f for f in kept if any(a.phase == phase.id for a in f.alternatives)]
+    if stands_for:
+        status: Status = "possible"
+        reason = f"would explain the scans nearly as well as {stands_for[0].name}"
+        told = next(a.told_by for a in stands_for[0].alternatives if a.phase == phase.id)
+        alternatives: tuple[Alternative, ...] = (Alternative(phase=stands_for[0].phase, name=stands_for[0].name, told_by=told),)
+    else:
+        status, reason, alternatives = "not_detected", absent_reason(one, labels), ()
+    return PhaseFinding(
+        phase=phase.id, name=phase.name, group=phase.group, status=status, reason=reason, alternatives=alternatives
+    )
+
+
+def examine(sample: Sample, phases: Sequence[Phase] | None = None, instrument: Instrument | None = None) -> Examination:
+    """Compare a sample with the library and decide, keeping what the estimate needs.
+
+    Parameters
+    ----------
+    sample : Sample
+    phases : sequence of Phase, optional
+        Phases to consider; the whole library when left out.
+    instrument : Instrument, optional
+
+    Returns
+    -------
+    Examination
+    """
+    chosen = tuple(all_phases() if phases is None else phases)
+    considered, arena, selection = _compare(sample, chosen, instrument or Instrument())
+    labels = sample.labels
+    plates = {a for a in selection.active if load_phase(arena.candidates[a].phase).is_sheet_silicate}
+    total = sum(selection.amount(a) for a in plates)
+    shares = {a: selection.amount(a) / total if a in plates and total > 0 else 1.0 for a in selection.active}
+    kept = [_kept_finding(arena, selection, a, labels, shares[a]) for a in selection.active]
+    names = {finding.phase for finding in kept}
+    others = [_other_finding(one, kept, labels) for one in considered if one.phase.id not in names]
+    kept.sort(key=lambda f: -next(shares[a] for a in selection.active if arena.candidates[a].phase == f.phase))
+    others.sort(key=lambda f: (f.status != "possible", f.phase))
+    findings = Findings(
+        sample=sample.name,
+        phases=(*kept, *others),
+        unassigned=unassigned_lines(arena, selection, labels),
+        measure_next=next_measurements(sample, kept),
+        notes=sample_notes(sample, arena),
+    )
+    return Examination(sample, arena, selection, findings)
+
+
+def identify(sample: Sample, phases: Sequence[Phase] | None = None, instrument: Instrument | None = None) -> Findings:
+    """Which sheet silicates are in a sample, with the evidence for and against each.
+
+    All scans are compared together: candidates from the observed lines, then competing sets of phases by fit, and the
+    fewest phases that explain every scan are kept. A rare phase has to be better supported than a common one.
+
+    Parameters
+    ----------
+    sample : Sample
+        Its scans, one per mount and treatment.
+    phases : sequence of Phase, optional
+        Phases to consider; the whole library when left out.
+    instrument : Instrument, optional
+        Settings of the diffractometer; usual ones when left out.
+
+    Returns
+    -------
+    Findings
+        Every phase considered, with status, reason, evidence, alternatives, and what to measure next.
+    """
+    return examine(sample, phases, instrument).findings

@@ -1,0 +1,221 @@
+"""The evidence ledger: what each scan says for or against a phase, as facts in plain words."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from xrdmica.crystals.library import load_phase
+from xrdmica.diffraction.columns import ExpectedLine, expected_lines
+from xrdmica.diffraction.optics import displacement_shift
+from xrdmica.identify.candidates import match_peak
+from xrdmica.identify.search import Arena, Selection
+from xrdmica.matching.prepare import Prepared
+from xrdmica.results import Evidence
+from xrdmica.scans.peaks import Peak
+
+__all__ = ["Ledger", "LineReading", "ledger_for"]
+
+FloatArray = NDArray[np.float64]
+_MEASURABLE = 4.0  # sigma: a line predicted below this proves nothing by being absent
+_CLEAR = 0.5  # share of the calculated height from which a line belongs to one phase
+_SHARED = 0.12
+_FULL_WEIGHT = 30.0  # sigma
+_MOVED = 0.5  # angstrom
+
+
+@dataclass(frozen=True)
+class LineReading:
+    """One expected line of a phase held against a scan.
+
+    Attributes
+    ----------
+    scan : int
+    order : int
+        l of 00l, or the number of the line for phases without orders.
+    line : ExpectedLine
+    significance : float
+        Predicted height in standard errors.
+    own : float
+        Share of the calculated height at that place that is this phase's.
+    seen : float
+        Part of the predicted height found in the data, 1 when it fits.
+    peak : Peak or None
+    """
+
+    scan: int
+    order: int
+    line: ExpectedLine
+    significance: float
+    own: float
+    seen: float
+    peak: Peak | None
+
+    @property
+    def found(self) -> bool:
+        """Whether the line is there: as a peak, or at least as much as predicted within a factor of two."""
+        return self.seen > 0.5 or (self.peak is not None and self.seen > 0.2)
+
+    @property
+    def clear(self) -> bool:
+        """Whether it is there and mostly this phase's."""
+        return self.found and self.own >= _CLEAR
+
+    @property
+    def missing(self) -> bool:
+        """Whether it should be seen and is not."""
+        return not self.found and self.seen < 0.3 and self.significance * (1 - self.seen) > 2 * _MEASURABLE
+
+
+@dataclass(frozen=True)
+class Ledger:
+    """Everything that speaks for or against one kept phase.
+
+    Attributes
+    ----------
+    readings : tuple of LineReading
+    evidence : tuple of Evidence
+    clear_lines : int
+        Distinct lines that are clearly this phase's in at least one scan.
+    shared_lines : int
+        Further distinct lines found, but mostly another phase's.
+    missing_lines : int
+    moved : bool
+        Whether the first line was clearly seen at different spacings after different treatments.
+    """
+
+    readings: tuple[LineReading, ...]
+    evidence: tuple[Evidence, ...]
+    clear_lines: int
+    shared_lines: int
+    missing_lines: int
+    moved: bool
+
+
+def _calculated(arena: Arena, selection: Selection, scan: int) -> FloatArray:
+    """Contributions of the kept candidates in one scan, shape (n, a)."""
+    columns = arena.columns[scan][:, list(selection.active)]
+    return np.asarray(columns * selection.fit.amounts * selection.fit.scales[scan])
+
+
+def _fitted_residual(item: Prepared, total: FloatArray) -> FloatArray:
+    """Data minus calculated scan minus the best background."""
+    rest = (item.scan.counts - total) * item.weight
+    return np.asarray((rest - item.basis @ (item.basis.T @ rest)) / item.weight)
+
+
+def _read_line(
+    number: int, scan: int, line: ExpectedLine, item: Prepared, own: FloatArray, total: FloatArray, residual: FloatArray
+) -> LineReading | None:
+    view = item.view
+    place = line.two_theta + float(displacement_shift(np.array(line.two_theta), view.displacement, view.grid.instrument))
+    reach = max(1.2 * view.width, 0.08)
+    window = np.abs(item.scan.two_theta - place) <= reach
+    if window.sum() < 3:
+        return None
+    height = float(own[window].max())
+    independent = max(window.sum() * item.scan.step / max(item.scan.step, view.width / 3), 1.0)
+    significance = height * float(item.weight[window].mean()) * np.sqrt(min(independent, window.sum()))
+    if significance < _MEASURABLE:
+        return None
+    w = item.weight[window] ** 2
+    predicted = own[window]
+    seen = 1.0 + float((w * predicted) @ residual[window]) / float((w * predicted) @ predicted)
+    peak = match_peak(item.peaks, place, 0.12)
+    share = height / max(float(total[window].max()), 1e-300)
+    return LineReading(scan, line.order or -number, line, float(significance), min(share, 1.0), seen, peak)
+
+
+def _as_evidence(reading: LineReading, labels: Sequence[str], name: str) -> Evidence:
+    peak, line = reading.peak, reading.line
+    weight = min(reading.significance, _FULL_WEIGHT) / 10
+    called = f"00{reading.order}" if reading.order > 0 else "a line"
+    common = {
+        "scan": labels[reading.scan],
+        "order": reading.order if reading.order > 0 else None,
+        "d_expected": round(line.d_spacing, 4),
+        "two_theta": None if peak is None else round(peak.two_theta, 4),
+        "d_observed": None if peak is None else round(peak.d_spacing, 4),
+        "d_error": None if peak is None else round(peak.d_error, 4),
+    }
+    if reading.missing:
+        text = f"{called} of {name} expected at {line.d_spacing:.3f} Å with {reading.significance:.0f} sigma is not there"
+        return Evidence(kind="missing line", text=text, weight=-round(weight, 2), **common)
+    seen = f"found at {peak.d_spacing:.3f} Å" if peak is not None else "found as part of a wider line"
+    text = f"{called} {seen}, expected {line.d_spacing:.3f} Å, height {100 * max(reading.seen, 0):.0f} % of the calculated"
+    if reading.own >= _CLEAR:
+        return Evidence(kind="line", text=text, weight=round(weight * reading.own, 2), **common)
+    text += f"; {100 * (1 - reading.own):.0f} % of the line belongs to other phases"
+    return Evidence(kind="overlap", text=text, weight=round(0.3 * weight * reading.own, 2), **common)
+
+
+def _behaviour(readings: Sequence[LineReading], arena: Arena, place: int, labels: Sequence[str]) -> tuple[list[Evidence], bool]:
+    """What the first line does from treatment to treatment."""
+    candidate = arena.candidates[place]
+    first: dict[int, float] = {}
+    for reading in readings:
+        if reading.order in (1, -1) and reading.clear:
+            first[reading.scan] = reading.line.d_spacing
+    conditions = {arena.prepared[k].scan.treatment.name for k in first}
+    out: list[Evidence] = []
+    moved = False
+    if len(conditions) > 1:
+        spread = max(first.values()) - min(first.values())
+        course = ", ".join(f"{d:.2f} Å ({labels[k]})" for k, d in first.items())
+        moved = spread > _MOVED
+        word = "moves with treatment as it should" if moved else "stays where it is, as it should"
+        out.append(Evidence(kind="behaviour", text=f"the first line {word}: {course}", weight=2.0 if moved else 0.7))
+    phase = load_phase(candidate.phase)
+    for k, component in enumerate(candidate.components):
+        treatment = arena.prepared[k].scan.treatment
+        if component is None and phase.is_sheet_silicate and any(s.lost for s in phase.states_for(treatment)):
+            text = f"its lines are gone after {treatment.label}, as they should be"
+            out.append(Evidence(kind="behaviour", text=text, weight=1.0, scan=labels[k]))
+    return out, moved
+
+
+def ledger_for(arena: Arena, selection: Selection, place: int, labels: Sequence[str]) -> Ledger:
+    """Read every expected line of a kept phase in every scan.
+
+    Parameters
+    ----------
+    arena : Arena
+    selection : Selection
+    place : int
+        Candidate kept in the selection.
+    labels : sequence of str, length k
+        Scan labels.
+
+    Returns
+    -------
+    Ledger
+    """
+    candidate = arena.candidates[place]
+    name = load_phase(candidate.phase).name
+    position = selection.active.index(place)
+    readings: list[LineReading] = []
+    for k, item in enumerate(arena.prepared):
+        component = candidate.components[k]
+        if component is None:
+            continue
+        parts = _calculated(arena, selection, k)
+        total = parts.sum(axis=1)
+        residual = _fitted_residual(item, total)
+        for number, line in enumerate(expected_lines(component, item.view), start=1):
+            reading = _read_line(number, k, line, item, parts[:, position], total, residual)
+            if reading is not None:
+                readings.append(reading)
+    behaviour, moved = _behaviour(readings, arena, place, labels)
+    clear = {r.order for r in readings if r.clear}
+    shared = {r.order for r in readings if r.found and r.own >= _SHARED} - clear
+    lines = [_as_evidence(r, labels, name) for r in readings if r.found or r.missing]
+    need = selection.need[place]
+    rise = f"leaving it out raises chi-square by {need.sum():.0f}"
+    fit = Evidence(kind="fit", text=rise, weight=round(float(np.clip(np.sqrt(max(need.sum(), 0)) / 10, 0, 3)), 2))
+    return Ledger(
+        tuple(readings), (*lines, *behaviour, fit), len(clear), len(shared), sum(r.missing for r in readings), moved
+    )
+

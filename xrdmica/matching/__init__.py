@@ -1,0 +1,1 @@
+"""Calculated scans matched to measured ones: what identification and estimation share."""

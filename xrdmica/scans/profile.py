@@ -1,0 +1,267 @@
+"""Pseudo-Voigt lines with the K-alpha doublet, and the least-squares fit of a group of them."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from xrdmica.radiation import Radiation
+
+__all__ = ["GroupFit", "fit_group", "pseudo_voigt"]
+
+_HALF_RADIAN = float(np.pi / 360)
+_GAUSS = 4.0 * np.log(2.0)
+_GAUSS_AREA = float(np.sqrt(np.pi / _GAUSS))  # area of a Gaussian of unit height and width
+_LORENTZ_AREA = float(np.pi / 2)
+_SHAPE_PRIOR = 1.2  # standard deviation of logit(eta): weak lines do not tell their shape
+_WIDTH_RATIO = 4.0  # the fit may change the width found by the search by this factor
+_EVALUATIONS = 25
+_RESTARTS = 3
+
+
+def pseudo_voigt(
+    x: NDArray[np.float64], centre: float, fwhm: float, eta: float, radiation: Radiation
+) -> NDArray[np.float64]:
+    """One reflection of unit single-line height, as the weighted sum over the lines of the tube.
+
+    Parameters
+    ----------
+    x : ndarray, shape (n,)
+        Scattering angle [degree].
+    centre : float
+        Position for the mean wavelength of the tube [degree].
+    fwhm : float
+        Full width at half maximum of each line [degree].
+    eta : float
+        Lorentzian fraction, 0 to 1.
+    radiation : Radiation
+        The tube.
+
+    Returns
+    -------
+    ndarray, shape (n,)
+        Profile.
+    """
+    out = np.zeros_like(x)
+    half = np.radians(centre) / 2
+    mean = radiation.mean_wavelength
+    for wavelength, weight in zip(radiation.wavelengths, radiation.weights, strict=True):
+        position = 2 * np.degrees(np.arcsin(min(np.sin(half) * wavelength / mean, 0.9999999)))
+        u2 = ((x - position) / fwhm) ** 2
+        out += weight * (eta / (1 + 4 * u2) + (1 - eta) * np.exp(-_GAUSS * u2))
+    return out
+
+
+@dataclass(frozen=True, eq=False)
+class GroupFit:
+    """Fitted lines of one group; every array has shape (k,).
+
+    Attributes
+    ----------
+    centre, fwhm : ndarray
+        [degree].
+    eta : ndarray
+        Lorentzian fraction.
+    amplitude : ndarray
+        Height of a single line [counts].
+    area : ndarray
+        [counts degree].
+    centre_error, fwhm_error, height_error, area_error : ndarray
+        Standard errors.
+    significance : ndarray
+        Amplitude over its standard error when position, width and shape are held.
+    correlation : ndarray
+        Largest correlation of the amplitude with that of another line of the group.
+    """
+
+    centre: NDArray[np.float64]
+    fwhm: NDArray[np.float64]
+    eta: NDArray[np.float64]
+    amplitude: NDArray[np.float64]
+    area: NDArray[np.float64]
+    centre_error: NDArray[np.float64]
+    fwhm_error: NDArray[np.float64]
+    height_error: NDArray[np.float64]
+    area_error: NDArray[np.float64]
+    significance: NDArray[np.float64]
+    correlation: NDArray[np.float64]
+
+
+class _Group:
+    """Model of one group in unbounded parameters: per line shift, width, shape, amplitude; then offset and tilt."""
+
+    def __init__(
+        self, x: NDArray[np.float64], y: NDArray[np.float64], sigma: NDArray[np.float64], background: NDArray[np.float64],
+        centres: NDArray[np.float64], widths: NDArray[np.float64], radiation: Radiation, step: float,
+    ) -> None:  # fmt: skip
+        self.x, self.y, self.weight, self.radiation = x, y, 1 / sigma, radiation
+        self.centres, self.widths, self.step = centres, widths, step
+        self.count = len(centres)
+        self.ratios = np.array(radiation.wavelengths)[:, None] / radiation.mean_wavelength
+        self.prior = (x.size + np.arange(self.count), 2 + 4 * np.arange(self.count))
+        self.shares = np.array(radiation.weights)
+        self.reach = np.maximum(0.6 * widths, 2 * step)
+        self.least = np.maximum(widths / _WIDTH_RATIO, 1.2 * step)
+        self.most = np.maximum(widths * _WIDTH_RATIO, 3 * step)
+        self.u = (x - x.mean()) / max(float(np.ptp(x)) / 2, 1e-9)
+        # the background is known to a few percent; its correction must not swallow broad lines
+        self.loose = max(0.03 * float(np.median(background)), 0.5 * float(np.median(sigma)))
+
+    def start(self) -> NDArray[np.float64]:
+        eta = np.full(self.count, 0.5)
+        basis = [pseudo_voigt(self.x, c, w, 0.5, self.radiation) for c, w in zip(self.centres, self.widths, strict=True)]
+        matrix = np.vstack([*basis, self.loose * np.ones_like(self.x)]).T * self.weight[:, None]
+        amplitude = np.linalg.lstsq(matrix, self.y * self.weight, rcond=None)[0][: self.count]
+        floor = 0.5 * float(np.median(1 / self.weight))
+        t = (self.widths - self.least) / (self.most - self.least)
+        t = np.clip(t, 0.02, 0.98)
+        per_line = [np.zeros(self.count), np.log(t / (1 - t)), np.log(eta / (1 - eta)), np.maximum(amplitude, floor)]
+        return np.concatenate([np.array(per_line).T.ravel(), [0.0, 0.0]])
+
+    def physical(self, p: NDArray[np.float64]) -> tuple[NDArray[np.float64], ...]:
+        """Centre, width, shape and amplitude of every line."""
+        lines = p[:-2].reshape(self.count, 4)
+        logistic = 1 / (1 + np.exp(-np.minimum(np.maximum(lines[:, 1:3], -30.0), 30.0)))
+        return (
+            self.centres + self.reach * np.tanh(lines[:, 0]),
+            self.least + (self.most - self.least) * logistic[:, 0],
+            logistic[:, 1],
+            lines[:, 3],
+        )
+
+    def at_bound(self, p: NDArray[np.float64]) -> NDArray[np.bool_]:
+        """Which lines ran to the end of the range that is open to their position or width."""
+        centre, fwhm, _, _ = self.physical(p)
+        far = np.abs(centre - self.centres) > 0.97 * self.reach
+        return np.asarray(far | (fwhm < 1.02 * self.least) & (fwhm > 2 * self.step) | (fwhm > 0.98 * self.most))
+
+    def mixed(self, parts: NDArray[np.float64]) -> NDArray[np.float64]:
+        """Sum over the lines of the tube by their shares."""
+        return np.asarray((self.shares @ parts.reshape(len(self.shares), -1)).reshape(parts.shape[1:]))
+
+    def evaluate(self, p: NDArray[np.float64]) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
+        """Weighted residuals with those of the priors below, and their derivatives."""
+        centre, fwhm, eta, amplitude = self.physical(p)
+        n = self.x.size
+        jacobian = np.zeros((n + self.count + 2, p.size))
+        shift_slope = self.reach - (centre - self.centres) ** 2 / self.reach
+        width_slope = (fwhm - self.least) * (self.most - fwhm) / (self.most - self.least)
+        sine = np.minimum(self.ratios * np.sin(centre * _HALF_RADIAN), 0.9999999)
+        # axes: line of the tube, point, reflection; the lines move together within a percent when the centre moves
+        u = (self.x[:, None] - (np.arcsin(sine) / _HALF_RADIAN)[:, None, :]) / fwhm
+        square = u * u
+        lorentz = 1 / (1 + 4 * square)
+        gauss = np.exp(-_GAUSS * square)
+        difference = lorentz - gauss
+        by_u = u * (eta * lorentz * lorentz * -8 + gauss * ((eta - 1) * (2 * _GAUSS)))
+        profile = self.mixed(gauss + eta * difference)
+        by_centre = self.mixed(by_u) * (-amplitude * shift_slope / fwhm)
+        by_width = self.mixed(by_u * u) * (-amplitude * width_slope / fwhm)
+        by_eta = self.mixed(difference) * (amplitude * eta * (1 - eta))
+        model = profile @ amplitude + self.loose * (p[-2] + p[-1] * self.u)
+        jacobian[:n, 0:-2:4] = by_centre
+        jacobian[:n, 1:-2:4] = by_width
+        jacobian[:n, 2:-2:4] = by_eta
+        jacobian[:n, 3:-2:4] = profile
+        jacobian[self.prior] = 1 / _SHAPE_PRIOR
+        jacobian[:n, -2] = self.loose
+        jacobian[:n, -1] = self.loose * self.u
+        jacobian[:n] *= self.weight[:, None]
+        jacobian[-2, -2] = jacobian[-1, -1] = 1.0
+        residual = np.concatenate([(model - self.y) * self.weight, p[2:-2:4] / _SHAPE_PRIOR, p[-2:]])
+        return residual, jacobian
+
+
+def fit_group(
+    x: NDArray[np.float64],
+    y: NDArray[np.float64],
+    sigma: NDArray[np.float64],
+    background: NDArray[np.float64],
+    centres: NDArray[np.float64],
+    widths: NDArray[np.float64],
+    radiation: Radiation,
+) -> GroupFit:
+    """Fit overlapping lines together.
+
+    Parameters
+    ----------
+    x, y, sigma, background : ndarray, shape (n,)
+        Angle [degree], counts above background, their standard errors, background.
+    centres, widths : ndarray, shape (k,)
+        Starting positions and full widths [degree].
+    radiation : Radiation
+        The tube.
+
+    Returns
+    -------
+    GroupFit
+        Errors are those of the covariance, scaled up by the reduced chi-square when that is above 1, never down.
+    """
+    step = float(np.median(np.diff(x)))
+    for _ in range(_RESTARTS):
+        group = _Group(x, y, sigma, background, centres, widths, radiation, step)
+        solution = _solve(group)
+        if not group.at_bound(solution).any():
+            break
+        # a start that was too far off: go on from where the line has run to
+        centres, widths, _, _ = group.physical(solution)
+        centres = np.clip(centres, x[0], x[-1])
+        widths = np.clip(widths, 1.5 * step, 0.5 * float(np.ptp(x)))
+    return _summary(group, solution)
+
+
+def _solve(group: _Group) -> NDArray[np.float64]:
+    """Least-squares parameters of one group."""
+    from scipy.optimize import least_squares
+
+    start = group.start()
+    last: list[tuple[bytes, NDArray[np.float64], NDArray[np.float64]]] = []
+
+    def both(p: NDArray[np.float64]) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
+        key = p.tobytes()
+        if not last or last[0][0] != key:
+            last[:] = [(key, *group.evaluate(p))]
+        return last[0][1], last[0][2]
+
+    solution = least_squares(
+        lambda p: both(p)[0], start, jac=lambda p: both(p)[1], method="lm", max_nfev=_EVALUATIONS,
+        xtol=1e-4, ftol=1e-5, gtol=1e-8, x_scale=np.maximum(np.abs(start), 1.0),
+    )  # fmt: skip
+    return np.asarray(solution.x)
+
+
+def _summary(group: _Group, p: NDArray[np.float64]) -> GroupFit:
+    residual, jacobian = group.evaluate(p)
+    centre, fwhm, eta, amplitude = group.physical(p)
+    freedom = max(group.x.size - 4 * group.count, 1)
+    inflation = max(1.0, float(residual @ residual) / freedom)
+    covariance = np.linalg.pinv(jacobian.T @ jacobian, rcond=1e-12, hermitian=True) * inflation
+    errors = np.sqrt(np.maximum(np.diag(covariance), 0.0))[:-2].reshape(group.count, 4)
+    reach = group.reach * (1 - np.tanh(p[:-2:4]) ** 2)
+    stretch = (fwhm - group.least) * (group.most - fwhm) / (group.most - group.least)
+    per_height = fwhm * (eta * _LORENTZ_AREA + (1 - eta) * _GAUSS_AREA)
+    area_error = np.empty(group.count)
+    for i in range(group.count):
+        factor = per_height[i] / fwhm[i]
+        gradient = np.array([
+            amplitude[i] * factor * stretch[i],
+            amplitude[i] * fwhm[i] * (_LORENTZ_AREA - _GAUSS_AREA) * eta[i] * (1 - eta[i]),
+            per_height[i],
+        ])  # fmt: skip
+        block = covariance[4 * i + 1 : 4 * i + 4, 4 * i + 1 : 4 * i + 4]
+        area_error[i] = np.sqrt(max(float(gradient @ block @ gradient), 0.0))
+    linear = np.append(np.arange(3, 4 * group.count, 4), [p.size - 2, p.size - 1])
+    held = np.linalg.pinv(jacobian[:, linear].T @ jacobian[:, linear], rcond=1e-12, hermitian=True)
+    spread = np.sqrt(np.maximum(np.diag(held)[:-2], 1e-30))
+    matrix = np.abs(held[:-2, :-2] / np.outer(spread, spread))
+    np.fill_diagonal(matrix, 0.0)
+    significance = amplitude / (spread * np.sqrt(inflation))
+    # a position cannot be better known than that of a line free of neighbours; also holds at the end of an open range
+    least = 0.25 * fwhm / np.maximum(np.abs(significance), 1e-6)
+    return GroupFit(
+        centre, fwhm, eta, amplitude, amplitude * per_height,
+        np.maximum(errors[:, 0] * reach, least), np.maximum(errors[:, 1] * stretch, least),
+        errors[:, 3], area_error, significance, matrix.max(axis=1, initial=0.0),
+    )  # fmt: skip
