@@ -25,6 +25,9 @@ __all__ = ["Examination", "examine", "identify"]
 SWAP = 100.0  # rise of chi-square below which another phase would do as well
 _TRACE = 0.025  # share of the sheet silicates below which a phase is called a trace
 _NEIGHBOUR = 0.45  # angstrom
+# layers whose spacing depends on what is between them are named only by what a treatment does to them (common practice)
+_NEED_TREATMENT = ("smectite", "interstratified", "vermiculite")
+_TELLING = ("glycolated", "glycerolated", "heated")
 
 
 @dataclass(frozen=True, eq=False)
@@ -141,8 +144,10 @@ def _neighbours(arena: Arena, one: int, two: int) -> bool:
     )
 
 
-def _rivals(arena: Arena, selection: Selection, place: int) -> tuple[tuple[str, ...], tuple[str, ...]]:
-    """Phases that would do nearly as well as a kept one: (common, rare)."""
+def _rivals(
+    arena: Arena, selection: Selection, place: int, *, anywhere: bool = False
+) -> tuple[tuple[str, ...], tuple[str, ...]]:
+    """Phases that would do nearly as well as a kept one: (common, rare); look-alikes and neighbours, or `anywhere`."""
     common: list[str] = []
     rare: list[str] = []
     look_alikes = {x.id for x in load_phase(arena.candidates[place].phase).look_alikes}
@@ -150,18 +155,23 @@ def _rivals(arena: Arena, selection: Selection, place: int) -> tuple[tuple[str, 
         if other in selection.active:
             continue
         name = arena.candidates[other].phase
-        if name not in look_alikes and not _neighbours(arena, place, other):
+        if not anywhere and name not in look_alikes and not _neighbours(arena, place, other):
             continue
         if swapped(arena, selection, place, other) < SWAP * selection.noise:
             (common if load_phase(name).occurrence == "common" else rare).append(name)
     return tuple(common), tuple(rare)
 
 
-def _status(phase: Phase, ledger: Ledger, rivals: Sequence[str], share: float, conditions: int) -> Status:
-    convincing = ledger.clear_lines >= 2 or (
+def _convincing(ledger: Ledger, conditions: int) -> bool:
+    """Whether the lines suffice: two of its own, or one that moves with treatment or has a companion under other lines."""
+    enough = ledger.clear_lines >= 2 or (
         ledger.clear_lines == 1 and (ledger.moved or (ledger.shared_lines >= 1 and conditions > 1))
     )
-    if not convincing or ledger.missing_lines > max(1, ledger.clear_lines // 2) or rivals:
+    return enough and ledger.missing_lines <= max(1, ledger.clear_lines // 2)
+
+
+def _status(phase: Phase, convincing: bool, rivals: Sequence[str], share: float, treated: bool) -> Status:
+    if not convincing or rivals or (phase.group in _NEED_TREATMENT and not treated):
         return "possible"
     return "trace" if phase.is_sheet_silicate and share < _TRACE else "present"
 
@@ -180,15 +190,21 @@ def _kept_finding(arena: Arena, selection: Selection, place: int, labels: Sequen
     ledger = ledger_for(arena, selection, place, labels)
     common, rare = _rivals(arena, selection, place)
     conditions = len({item.scan.treatment.name for item in arena.prepared})
-    status = _status(phase, ledger, common, share, conditions)
+    convincing = _convincing(ledger, conditions)
+    if not convincing:
+        common, rare = _rivals(arena, selection, place, anywhere=True)
+    treated = ledger.moved or any(s.scan.treatment.condition in _TELLING for s in arena.prepared)
+    status = _status(phase, convincing, common, share, treated)
     alternatives = tuple(
         Alternative(phase=name, name=load_phase(name).name, told_by=_told_by(phase.id, name)) for name in (*common, *rare)
     )
     states = {labels[k]: c.label for k, c in enumerate(candidate.components) if c is not None and c.states}
     spacing = next((c.spacings[0] for c in candidate.components if c is not None and c.spacings and c.fraction is None), None)
-    reason = kept_reason(phase, status, ledger, [load_phase(name).name for name in common])
+    rivals = [load_phase(name).name for name in common]
+    reason = kept_reason(phase, status, ledger, rivals, treated=treated or phase.group not in _NEED_TREATMENT)
     return PhaseFinding(
-        phase=phase.id, name=phase.name, group=phase.group, status=status, reason=reason, evidence=ledger.evidence,
+        phase=phase.id, name=phase.name, group=phase.group, status=status, reason=reason, convincing=convincing,
+        evidence=ledger.evidence,
         alternatives=alternatives, states=states, basal_spacing=None if spacing is None else round(spacing, 4),
     )  # fmt: skip
 

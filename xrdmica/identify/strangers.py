@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -63,11 +62,10 @@ def with_strangers(hopeful: Sequence[Hopeful], prepared: Sequence[Prepared]) -> 
         if not strange:
             out.append(item)
             continue
-        terms = [item.basis]
-        for peak in strange:
-            for factor in (0.8, 1.3):  # two widths leave the true width free
-                shape = pseudo_voigt(item.scan.two_theta - peak.two_theta, factor * peak.fwhm, 0.5)
-                terms.append((shape * item.weight)[:, None])
-        basis, _ = np.linalg.qr(np.hstack(terms))
-        out.append(replace(item, basis=basis))
+        terms = [
+            pseudo_voigt(item.scan.two_theta - peak.two_theta, factor * peak.fwhm, 0.5)
+            for peak in strange
+            for factor in (0.8, 1.3)  # two widths leave the true width free
+        ]
+        out.append(item.with_terms(item.smooth, np.column_stack(terms)))
     return tuple(out)

@@ -5,10 +5,12 @@ from __future__ import annotations
 from collections.abc import Sequence
 
 import numpy as np
+from numpy.typing import NDArray
 
 from xrdmica.crystals.library import all_phases
 from xrdmica.diffraction.optics import displacement_shift
 from xrdmica.identify.search import Arena, Selection
+from xrdmica.matching.prepare import Prepared
 from xrdmica.results import UnassignedLine
 
 __all__ = ["suggestions", "unassigned_lines"]
@@ -67,6 +69,15 @@ def suggestions(d_spacing: float) -> tuple[str, ...]:
     return tuple(dict.fromkeys([*named, *(n for n in near if not any(n.lower() in text for text in named))]))[:5]
 
 
+def above_background(item: Prepared, total: NDArray[np.float64]) -> NDArray[np.float64]:
+    """What stands above the calculated scan and the smooth background: unclaimed lines and noise, shape (n,)."""
+    terms = np.hstack([item.smooth, item.strange]) * item.weight[:, None]
+    size = np.sqrt((terms**2).sum(axis=0))
+    found, *_ = np.linalg.lstsq(terms / size, (item.scan.counts - total) * item.weight, rcond=1e-10)
+    smooth = item.smooth @ (found / size)[: item.smooth.shape[1]]
+    return np.asarray(item.scan.counts - total - smooth)
+
+
 def unassigned_lines(arena: Arena, selection: Selection, labels: Sequence[str]) -> tuple[UnassignedLine, ...]:
     """Observed lines of which the kept phases explain less than half.
 
@@ -85,12 +96,16 @@ def unassigned_lines(arena: Arena, selection: Selection, labels: Sequence[str]) 
     for k, item in enumerate(arena.prepared):
         total = arena.columns[k][:, list(selection.active)] @ (selection.fit.amounts * selection.fit.scales[k])
         shift = item.view.displacement
+        rest = above_background(item, total)
         for peak in item.peaks:
             if peak.height_sigma < _SIGNIFICANT:
                 continue
             near = np.abs(item.scan.two_theta - peak.two_theta) <= max(0.4 * peak.fwhm, 0.06)
-            explained = float(total[near].max()) if near.any() else 0.0
-            if explained > _EXPLAINED * peak.height:
+            if not near.any() or float(total[near].max()) > _EXPLAINED * peak.height:
+                continue
+            left = float(rest[near].mean())
+            error = float(np.sqrt((item.weight[near] ** -2).mean() / near.sum()))
+            if left < (1 - _EXPLAINED) * 0.5 * peak.height or left < _SIGNIFICANT * error:
                 continue
             true = peak.two_theta - float(displacement_shift(np.array(peak.two_theta), shift, item.view.grid.instrument))
             spacing = float(item.scan.radiation.d_spacing(true))

@@ -17,8 +17,8 @@ def _listed(names: Sequence[str]) -> str:
     return names[0] if len(names) == 1 else f"{', '.join(names[:-1])} and {names[-1]}"
 
 
-def kept_reason(phase: Phase, status: Status, ledger: Ledger, rivals: Sequence[str]) -> str:
-    """One sentence on a phase that the fit keeps."""
+def kept_reason(phase: Phase, status: Status, ledger: Ledger, rivals: Sequence[str], *, treated: bool = True) -> str:
+    """One sentence on a phase that the fit keeps; `treated` says whether a treatment that would tell was measured."""
     count = ledger.clear_lines
     lines = f"{count} {'line is' if count == 1 else 'lines are'} clearly its own"
     if ledger.shared_lines:
@@ -30,6 +30,8 @@ def kept_reason(phase: Phase, status: Status, ledger: Ledger, rivals: Sequence[s
         return f"needed by the scans{amount}: {lines}"
     if rivals:
         return f"something at its place is needed, but {_listed(rivals)} would explain the scans nearly as well; {lines}"
+    if not treated:
+        return f"fits best, but only a treated mount (glycol, heating) can name {phase.name}: {lines}"
     if ledger.missing_lines:
         return f"would improve the fit, but {ledger.missing_lines} of its lines should be seen and are not; {lines}"
     return f"would improve the fit, but that is too little to be sure: {lines}"

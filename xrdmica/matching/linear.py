@@ -94,10 +94,10 @@ def nonnegative(gram: FloatArray, moment: FloatArray) -> FloatArray:
     alive = np.diag(gram) > 0
     if not alive.all():
         # a phase that shows nothing here has no amount here
-        amounts: FloatArray = np.zeros(moment.size)
+        shown = np.zeros(moment.size)
         if alive.any():
-            amounts[alive] = nonnegative(gram[np.ix_(alive, alive)], moment[alive])
-        return amounts
+            shown[alive] = nonnegative(gram[np.ix_(alive, alive)], moment[alive])
+        return shown
     if moment.size == 0:
         return np.zeros(0)
     size = np.sqrt(np.diag(gram))

@@ -196,13 +196,16 @@ def _texture_knobs(phase: Phase, component: Component, place: int, scans: tuple[
 
 
 def _exchange_knobs(phase: Phase, start: dict[str, float], place: int, scans: tuple[int, ...]) -> list[Knob]:
-    return [
-        Knob(
-            f"{v.id}_p{place}", "exchange", float(np.clip(start.get(v.id, v.typical), v.minimum + 1e-3, v.maximum - 1e-3)), v.minimum, v.maximum,
-            (v.maximum - v.minimum) / 3, v.typical, place, scans, v.id,
+    knobs = []
+    for v in phase.variables:
+        if v.kind != "exchange" or v.maximum <= v.minimum:
+            continue
+        value = float(np.clip(start.get(v.id, v.typical), v.minimum + 1e-3, v.maximum - 1e-3))
+        prior = (v.maximum - v.minimum) / 3
+        knobs.append(
+            Knob(f"{v.id}_p{place}", "exchange", value, v.minimum, v.maximum, prior, v.typical, place, scans, v.id)
         )
-        for v in phase.variables if v.kind == "exchange" and v.maximum > v.minimum
-    ]  # fmt: skip
+    return knobs
 
 
 def build_model(

@@ -14,9 +14,9 @@ from xrdmica.scans.background import estimate_background
 from xrdmica.scans.peaks import Peak, find_peaks
 from xrdmica.scans.scan import Sample, Scan
 
-__all__ = ["Prepared", "background_basis", "prepare", "prepare_scan"]
+__all__ = ["Prepared", "background_terms", "orthonormal", "prepare", "prepare_scan"]
 
-_WINDOWS = {"oriented": (36.0, 2.30), "random": (36.0, 1.44)}  # angstrom: from the longest superlattice to the last line of use
+_WINDOWS = {"oriented": (36.0, 1.80), "random": (36.0, 1.44)}  # angstrom: from the longest superlattice to the last line of use
 _MODEL_ERROR = 0.04  # relative error of calculated intensities that no parameter here removes, common practice
 _BACKGROUND_ERROR = 0.004
 
@@ -38,8 +38,12 @@ class Prepared:
         Smooth estimate, for noise levels and pictures.
     weight : ndarray, shape (n,)
         1/sigma, with counting and model error.
-    basis : ndarray, shape (n, b)
-        Orthonormal basis of the weighted background.
+    smooth : ndarray, shape (n, b)
+        Background terms.
+    strange : ndarray, shape (n, c)
+        Terms of lines that no phase can claim.
+    basis : ndarray, shape (n, b + c)
+        Orthonormal basis of both, weighted.
     """
 
     label: str
@@ -48,6 +52,8 @@ class Prepared:
     peaks: tuple[Peak, ...]
     background: NDArray[np.float64]
     weight: NDArray[np.float64]
+    smooth: NDArray[np.float64]
+    strange: NDArray[np.float64]
     basis: NDArray[np.float64]
 
     def moved(self, displacement: float) -> Prepared:
@@ -58,29 +64,36 @@ class Prepared:
         """The same with another orientation spread [degree]."""
         return replace(self, view=replace(self.view, orientation_spread=orientation_spread))
 
+    def with_terms(self, smooth: NDArray[np.float64], strange: NDArray[np.float64]) -> Prepared:
+        """The same with other terms for background and unclaimed lines."""
+        basis = orthonormal(np.hstack([smooth, strange]), self.weight)
+        return replace(self, smooth=smooth, strange=strange, basis=basis)
 
-def background_basis(two_theta: NDArray[np.float64], weight: NDArray[np.float64], stiffness: int = 4) -> NDArray[np.float64]:
+
+def background_terms(two_theta: NDArray[np.float64], terms: int = 4) -> NDArray[np.float64]:
     """Smooth terms for what lies under the lines: a polynomial and the rise to low angles.
 
     Parameters
     ----------
     two_theta : ndarray, shape (n,)
         [degree]
-    weight : ndarray, shape (n,)
-        1/sigma.
-    stiffness : int
+    terms : int
         Number of polynomial terms; fewer are stiffer.
 
     Returns
     -------
-    ndarray, shape (n, stiffness + 2)
-        Orthonormal after weighting.
+    ndarray, shape (n, terms + 2), or (n, terms) for a scan that starts above 12 degrees
     """
     x = 2 * (two_theta - two_theta[0]) / (two_theta[-1] - two_theta[0]) - 1
     low = two_theta[0] / two_theta
-    terms = [np.polynomial.chebyshev.chebval(x, np.eye(stiffness)[k]) for k in range(stiffness)]
-    terms += [low, low**2] if two_theta[0] < 12 else []
-    q, _ = np.linalg.qr(np.column_stack(terms) * weight[:, None])
+    columns = [np.polynomial.chebyshev.chebval(x, np.eye(terms)[k]) for k in range(terms)]
+    columns += [low, low**2] if two_theta[0] < 12 else []
+    return np.column_stack(columns)
+
+
+def orthonormal(terms: NDArray[np.float64], weight: NDArray[np.float64]) -> NDArray[np.float64]:
+    """Orthonormal basis of weighted terms (n, b)."""
+    q, _ = np.linalg.qr(terms * weight[:, None])
     return np.asarray(q)
 
 
@@ -118,7 +131,9 @@ def prepare_scan(label: str, scan: Scan, instrument: Instrument) -> Prepared:
     weight = 1.0 / sigma
     width = _instrument_width(peaks, instrument.fwhm)
     view = View(make_grid(cut.two_theta, cut.radiation, instrument), cut.two_theta, cut.mount, fwhm=width)
-    return Prepared(label, cut, view, peaks, background, weight, background_basis(cut.two_theta, weight))
+    smooth = background_terms(cut.two_theta)
+    none = np.zeros((cut.two_theta.size, 0))
+    return Prepared(label, cut, view, peaks, background, weight, smooth, none, orthonormal(smooth, weight))
 
 
 def prepare(sample: Sample, instrument: Instrument | None = None) -> tuple[Prepared, ...]:
