@@ -67,6 +67,7 @@ class PhaseFinding(Record):
     group: str
     status: Status
     reason: str = Field(description="the decision in one sentence")
+    convincing: bool = Field(default=False, description="its lines suffice for something of its kind, whatever its name")
     evidence: tuple[Evidence, ...] = ()
     alternatives: tuple[Alternative, ...] = ()
     states: dict[str, str] = Field(default_factory=dict, description="scan label -> state of the phase in that scan")

@@ -51,11 +51,7 @@ def command(
         raise click.UsageError("--figure draws one sample: choose it with --sample, or use `xrdmica batch` for all.")
     settings = options.settings_from(radiation, phases, instrument, curves=figure_file is not None or json_file is not None)
     results, failed = of_each(entries, lambda scans: analyse_sample(scans, settings))
-    console = console_for()
-    for k, result in enumerate(results):
-        if k:
-            console.rule(characters="-")
-        result_table(result, console)
+    # files first: a reader of the table may go away (`| head`)
     if json_file is not None:
         write_text(json_file, options.json_of([result_text(result) for result in results], single=len(entries) == 1))
         click.echo(f"wrote {json_file}", err=True)
@@ -67,5 +63,10 @@ def command(
 
         save_figure(sample_figure(results[0]), figure_file)
         click.echo(f"wrote {figure_file}", err=True)
+    console = console_for()
+    for k, result in enumerate(results):
+        if k:
+            console.rule(characters="-")
+        result_table(result, console)
     if failed:
         ctx.exit(1)

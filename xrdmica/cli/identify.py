@@ -20,6 +20,7 @@ __all__ = ["command"]
 @options.instrument_option
 @options.json_option
 @options.csv_option
+@click.option("--all", "everything", is_flag=True, help="Print all facts, not the weightiest of each phase.")
 @click.pass_context
 def command(
     ctx: click.Context,
@@ -31,31 +32,37 @@ def command(
     instrument: str | None,
     json_file: Path | None,
     csv_file: Path | None,
+    everything: bool,
 ) -> None:
     """Say which phases are in a sample, with the evidence for and against each.
 
     PATH is a sample sheet, a folder of exports, or the scan files of one sample. The treatment of a file is read from
     its name (S12_EG.xy) or given behind a colon (scan7.xy:glycolated).
     """
-    from xrdmica.batch.analyse import analyse_sample
     from xrdmica.cli.inputs import entries_of, of_each
+    from xrdmica.crystals.library import load_phase
+    from xrdmica.diffraction.optics import load_instrument
+    from xrdmica.identify.decide import identify
     from xrdmica.report.files import EVIDENCE_HEADER, evidence_rows, write_csv, write_text
+    from xrdmica.report.scans import scan_summaries
     from xrdmica.report.tables import console_for, evidence_table
 
-    settings = options.settings_from(radiation, phases, instrument, curves=False)
+    library = [load_phase(phase) for phase in phases] or None
+    geometry = load_instrument(instrument) if instrument is not None else None
     entries = entries_of(paths, radiation=radiation, sample=sample, allow_outside=allow_outside)
-    results, failed = of_each(entries, lambda scans: analyse_sample(scans, settings))
-    console = console_for()
-    for k, result in enumerate(results):
-        if k:
-            console.rule(characters="-")
-        evidence_table(result.findings, console, scans=result.scans)
+    pairs, failed = of_each(entries, lambda scans: (identify(scans, library, geometry), scan_summaries(scans)))
+    # files first: a reader of the table may go away (`| head`)
     if json_file is not None:
-        texts = [result.findings.model_dump_json(indent=2) for result in results]
+        texts = [findings.model_dump_json(indent=2) for findings, _ in pairs]
         write_text(json_file, options.json_of(texts, single=len(entries) == 1))
         click.echo(f"wrote {json_file}", err=True)
     if csv_file is not None:
-        write_csv(csv_file, EVIDENCE_HEADER, evidence_rows(result.findings for result in results))
+        write_csv(csv_file, EVIDENCE_HEADER, evidence_rows(findings for findings, _ in pairs))
         click.echo(f"wrote {csv_file}", err=True)
+    console = console_for()
+    for k, (findings, scans) in enumerate(pairs):
+        if k:
+            console.rule(characters="-")
+        evidence_table(findings, console, scans=scans, most=None if everything else 8)
     if failed:
         ctx.exit(1)

@@ -68,7 +68,9 @@ def _show(scan: Scan, peaks: tuple[Peak, ...]) -> None:
     console = Console(highlight=False)
     if not console.is_terminal:
         console.width = max(console.width, 100)  # a pipe has no edge to fit into
-    console.print(f"{scan.source}: {len(peaks)} peaks, {scan.radiation.name} radiation", markup=False, soft_wrap=True)
+    number = f"{len(peaks)} peak{'' if len(peaks) == 1 else 's'}"
+    tube = f"{scan.radiation.name} radiation" if scan.radiation.name[0].isalpha() else f"wavelength {scan.radiation.name} Å"
+    console.print(f"{scan.source}: {number}, {tube}", markup=False, soft_wrap=True)
     if not peaks:
         return
     table = Table(box=SIMPLE_HEAD, padding=(0, 1), pad_edge=False)

@@ -157,7 +157,9 @@ def _rivals(
         name = arena.candidates[other].phase
         if not anywhere and name not in look_alikes and not _neighbours(arena, place, other):
             continue
-        if swapped(arena, selection, place, other) < SWAP * selection.noise:
+        # a rival must also do most of what the kept one does, or everything would be one on a poor fit
+        limit = min(SWAP * selection.noise, 0.5 * float(selection.need[place].sum()))
+        if swapped(arena, selection, place, other) < limit:
             (common if load_phase(name).occurrence == "common" else rare).append(name)
     return tuple(common), tuple(rare)
 

@@ -107,7 +107,7 @@ def nonnegative(gram: FloatArray, moment: FloatArray) -> FloatArray:
     matrix = root[:, None] * vectors[:, keep].T
     target = (vectors[:, keep].T @ (moment / size)) / root
     scaled, _ = nnls(matrix, target, maxiter=30 * moment.size)
-    return np.asarray(scaled / size)
+    return np.asarray(scaled / size, dtype=float)
 
 
 def _best_scales(systems: Sequence[ScanSystem], amounts: FloatArray) -> FloatArray:
@@ -115,7 +115,7 @@ def _best_scales(systems: Sequence[ScanSystem], amounts: FloatArray) -> FloatArr
     seen = np.array([float(amounts @ s.gram @ amounts) for s in systems])
     best = np.array([float(amounts @ s.moment) for s in systems])
     scales = np.divide(best, seen, out=np.zeros_like(best), where=seen > 0)
-    return np.maximum(scales, 1e-3 * max(float(scales.max()), 1e-30))
+    return np.asarray(np.maximum(scales, 1e-3 * max(float(scales.max()), 1e-30)))
 
 
 @dataclass(frozen=True, eq=False)

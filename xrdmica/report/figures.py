@@ -25,6 +25,8 @@ if TYPE_CHECKING:
     from matplotlib.axes import Axes
     from matplotlib.figure import Figure
 
+    from xrdmica.crystals.library import Phase
+
 __all__ = ["GROUP_COLOURS", "PhaseStyle", "figure_bytes", "phase_styles", "sample_figure", "save_figure"]
 
 Array = NDArray[np.float64]
@@ -88,13 +90,13 @@ def _symbol(phase: str, name: str) -> str:
     from xrdmica.crystals.library import load_phase
 
     try:
-        record = load_phase(phase)
-        if record.symbol:
-            return record.symbol
-        if record.stack is not None:
-            return f"{_symbol(record.stack.first, record.stack.first)}-{_symbol(record.stack.second, record.stack.second)}"
+        record: Phase | None = load_phase(phase)
     except XrdmicaError:
-        pass
+        record = None  # a phase of an older library, or of a file of one's own
+    if record is not None and record.symbol:
+        return record.symbol
+    if record is not None and record.stack is not None:
+        return f"{_symbol(record.stack.first, record.stack.first)}-{_symbol(record.stack.second, record.stack.second)}"
     words = re.split(r"[\s_\-/]+", _plain(name, 40))
     return "-".join(word[:3].capitalize() for word in words[:2] if word) or phase[:6]
 

@@ -7,9 +7,7 @@ import hashlib
 import io
 import json
 import math
-import os
 import re
-import tempfile
 import unicodedata
 from collections.abc import Iterable, Sequence
 from pathlib import Path
@@ -32,6 +30,7 @@ from xrdmica.report.rows import (
     summary_rows,
 )
 from xrdmica.results import Curve, SampleResult
+from xrdmica.scans.write import write_atomically
 
 __all__ = [
     "EVIDENCE_HEADER", "FAILURES_HEADER", "GROUPS_HEADER", "PROPORTIONS_HEADER", "SUMMARY_HEADER", "all_notes",
@@ -69,31 +68,15 @@ def write_bytes(path: Path, content: bytes) -> Path:
         If the folder cannot be made or written, or the disk is full.
     """
     path = Path(path)
-    temporary: str | None = None
     try:
         path.parent.mkdir(parents=True, exist_ok=True)
-        handle, temporary = tempfile.mkstemp(prefix=".", suffix=".part", dir=path.parent)
-        with os.fdopen(handle, "wb") as stream:
-            stream.write(content)
-        # mkstemp keeps others out; a result in a shared folder should follow the usual mask instead
-        Path(temporary).chmod(0o666 & ~_umask())
-        Path(temporary).replace(path)
     except OSError as error:
         raise XrdmicaError(
-            f"{path}: cannot be written",
-            why=error.strerror or str(error),
+            f"{path}: cannot be written", why=error.strerror or str(error),
             fix="choose a folder you may write to, on a disk with space",
-        ) from error
-    finally:
-        if temporary is not None:
-            Path(temporary).unlink(missing_ok=True)
+        ) from error  # fmt: skip
+    write_atomically(path, content)
     return path
-
-
-def _umask() -> int:
-    mask = os.umask(0o022)
-    os.umask(mask)
-    return mask
 
 
 def write_text(path: Path, text: str) -> Path:
@@ -180,19 +163,19 @@ def plan_stems(samples: Sequence[str], folder: Path | None = None) -> dict[str, 
 # ---------------------------------------------------------------- results
 
 
+def _digits(values: Iterable[float], n: int) -> tuple[float, ...]:
+    return tuple(float(f"{v:.{n}g}") for v in values)
+
+
 def _shorter(curve: Curve) -> Curve:
     """The curve with as many digits as the measurement carries: seven for intensities, eight for angles."""
-
-    def digits(values: Iterable[float], n: int) -> tuple[float, ...]:
-        return tuple(float(f"{v:.{n}g}") for v in values)
-
     return curve.model_copy(
         update={
-            "two_theta": digits(curve.two_theta, 8),
-            "observed": digits(curve.observed, 7),
-            "calculated": digits(curve.calculated, 6),
-            "background": digits(curve.background, 6),
-            "contributions": {phase: digits(values, 5) for phase, values in curve.contributions.items()},
+            "two_theta": _digits(curve.two_theta, 8),
+            "observed": _digits(curve.observed, 7),
+            "calculated": _digits(curve.calculated, 6),
+            "background": _digits(curve.background, 6),
+            "contributions": {phase: _digits(values, 5) for phase, values in curve.contributions.items()},
         }
     )
 

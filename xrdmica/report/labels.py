@@ -89,8 +89,9 @@ def place_labels(
     angle, observed = np.array(curve.two_theta), np.array(curve.observed)
     background = np.array(curve.background) if curve.background else np.zeros_like(angle)
     above = observed - background
-    # what the eye sees as the top of a line: the curve without its noise
-    profile = np.sqrt(np.maximum(np.array(curve.calculated) if curve.calculated else observed, 0.0))
+    # what the eye sees as the top of a line: the higher of both curves, without the noise
+    seen = np.convolve(np.pad(observed, 2, mode="edge"), np.full(5, 0.2), mode="valid")
+    profile = np.sqrt(np.maximum(np.maximum(seen, np.array(curve.calculated)) if curve.calculated else seen, 0.0))
     strengths = {id(m): _strength(m, curve, angle, above) for m in curve.marks}
     noise = float(np.sqrt(np.median(np.maximum(background, 1.0))))
     floor = max(0.002 * max(strengths.values(), default=0.0), 1.5 * noise)

@@ -80,6 +80,11 @@ def failures_rows(failures: Iterable[tuple[str, str]]) -> list[tuple[Cell, ...]]
     return [(sample, " ".join(reason.split())) for sample, reason in failures]
 
 
+def _fixed(value: float | None, decimals: int) -> str | None:
+    """Angles and spacings carry more digits than the weights and percentages of the other columns."""
+    return None if value is None else f"{value:.{decimals}f}"
+
+
 def evidence_rows(findings: Iterable[Findings]) -> list[tuple[Cell, ...]]:
     """One row per sample, phase and fact; a phase without facts has one row with its reason."""
     rows: list[tuple[Cell, ...]] = []
@@ -87,7 +92,8 @@ def evidence_rows(findings: Iterable[Findings]) -> list[tuple[Cell, ...]]:
         for f in sample.phases:
             start = (sample.sample, f.phase, f.name, f.group, f.status, f.reason)
             rows += [
-                (*start, e.kind, e.text, e.weight, e.scan or None, e.two_theta, e.d_observed, e.d_error, e.order, e.d_expected)
+                (*start, e.kind, e.text, e.weight, e.scan or None, _fixed(e.two_theta, 3), _fixed(e.d_observed, 4),
+                 _fixed(e.d_error, 4), e.order, _fixed(e.d_expected, 4))
                 for e in f.evidence
-            ] or [(*start, *(None,) * 9)]
+            ] or [(*start, *(None,) * 9)]  # fmt: skip
     return rows

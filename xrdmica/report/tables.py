@@ -184,20 +184,18 @@ def _weights(result: SampleResult, console: Console) -> None:
             if g.status != "not_detected" or g.weight_percent:
                 _add(groups, g.group, _STATUS_WORDS[g.status], _percent(g.weight_percent), _interval(g.low95, g.high95))
         body += [Text(), groups]
-    absent = _absent(p.phases)
-    if absent:
-        body += [Text(), Text(plain(absent))]
+    for sentence in _absent(p.phases):
+        body += [Text(), Text(plain(sentence))]
     body += [Text(), Text(_basis_sentence(p.basis)), *_quality(result)]
     _section(console, "Proportions", *body)
 
 
-def _absent(phases: Iterable[PhaseWeight]) -> str:
-    names = [
-        w.name + ("" if w.detection_limit is None else f" (< {_percent(w.detection_limit)})")
-        for w in phases
-        if w.status == "not_detected"
-    ]
-    return f"Not detected, with detection limit in wt %: {', '.join(names)}" if names else ""
+def _absent(phases: Iterable[PhaseWeight]) -> list[str]:
+    absent = [w for w in phases if w.status == "not_detected"]
+    limited = [f"{w.name} (< {_percent(w.detection_limit)})" for w in absent if w.detection_limit is not None]
+    others = [w.name for w in absent if w.detection_limit is None]
+    out = [f"Not detected, with detection limit in wt %: {', '.join(limited)}"] if limited else []
+    return out + ([f"Not detected, detection limit not known: {', '.join(others)}"] if others else [])
 
 
 def _basis_sentence(basis: str) -> str:
@@ -240,7 +238,9 @@ def _unassigned(findings: Findings, console: Console) -> None:
 # ---------------------------------------------------------------- evidence
 
 
-def evidence_table(findings: Findings, console: Console, *, scans: Sequence[ScanSummary] = ()) -> None:
+def evidence_table(
+    findings: Findings, console: Console, *, scans: Sequence[ScanSummary] = (), most: int | None = 8
+) -> None:
     """Print the decision on every phase with the facts for (+) and against (-) it.
 
     Parameters
@@ -251,12 +251,14 @@ def evidence_table(findings: Findings, console: Console, *, scans: Sequence[Scan
         Where to.
     scans : sequence of ScanSummary
         The scans used; when given, they are listed with their radiation.
+    most : int or None
+        Facts printed per phase, the weightiest first; None prints all.
     """
     console.print(Text(f"Sample {plain(findings.sample)}", style="bold"))
     if scans:
         _scans(scans, console)
     for f in findings.of_status("present", "trace", "possible"):
-        _one_phase(f, console)
+        _one_phase(f, console, most)
     if not findings.of_status("present", "trace", "possible"):
         _section(console, "No phase of the library was found")
     _unassigned(findings, console)
@@ -270,29 +272,34 @@ def evidence_table(findings: Findings, console: Console, *, scans: Sequence[Scan
     _list(console, "Notes", findings.notes)
 
 
-def _one_phase(f: PhaseFinding, console: Console) -> None:
+def _one_phase(f: PhaseFinding, console: Console, most: int | None) -> None:
     spacing = "" if f.basal_spacing is None else f", basal spacing {f.basal_spacing:.2f} Å"
     body: list[RenderableType] = [Text(plain(f.reason))]
     if f.states:
         body.append(Text(plain("States: " + "; ".join(f"{scan}: {state}" for scan, state in f.states.items()))))
     if f.evidence:
         table = _table(("", "left"), ("weight", "right"), ("Evidence", "left"), ("scan", "left"), ("2θ (°)", "right"),
-                       ("d found (Å)", "right"), ("d expected", "right"), wide="Evidence")  # fmt: skip
-        for e in sorted(f.evidence, key=lambda e: -abs(e.weight)):
+                       ("d found (Å)", "right"), ("expected", "right"), wide="Evidence")  # fmt: skip
+        ranked = sorted(f.evidence, key=lambda e: -abs(e.weight))
+        for e in ranked[:most]:
             _add(table, *_evidence_cells(e))
         body.append(table)
+        rest = ranked[most:] if most is not None else []
+        if rest:
+            against = sum(e.weight < 0 for e in rest)
+            body.append(Text(f"{len(rest)} lighter facts are not shown, {against} of them against it"))
     for other in f.alternatives:
         body.append(Text(plain(f"Could also be {other.name}; what would tell: {other.told_by}")))
     _section(console, f"{plain(f.name)} ({plain(f.group)}): {_STATUS_WORDS[f.status]}{spacing}", *body)
 
 
 def _evidence_cells(e: Evidence) -> tuple[str, ...]:
-    order = "" if e.order is None else f" 00{e.order}" if e.order < 10 else f" 00,{e.order}"
+    order = "" if e.order is None else f"00{e.order}" if e.order < 10 else f"00,{e.order}"
     found = "" if e.d_observed is None else f"{e.d_observed:.3f}" + ("" if e.d_error is None else f" ± {e.d_error:.3f}")
     return (
         "+" if e.weight > 0 else "-" if e.weight < 0 else "",
         f"{abs(e.weight):.1f}",
-        f"{e.kind}{order}: {e.text}",
+        f"{order}: {e.text}" if order else e.text,
         e.scan,
         "" if e.two_theta is None else f"{e.two_theta:.2f}",
         found,
@@ -315,14 +322,17 @@ def batch_table(results: Sequence[SampleResult], console: Console, *, phases: in
     phases : int
         How many phases to name per sample.
     """
-    table = _table(("Sample", "left"), ("swelling", "left"), ("main phases, wt %", "left"), ("possible", "left"),
+    table = _table(("Sample", "left"), ("swelling", "left"), ("main phases, wt %", "left"), ("possible (?)", "left"),
                    wide="main phases, wt %")  # fmt: skip
     for result in results:
         heavy = sorted(
             (w for w in result.proportions.phases if w.weight_percent is not None and w.status != "not_detected"),
             key=lambda w: -(w.weight_percent or 0.0),
         )
-        named = ", ".join(f"{w.name} {_percent(w.weight_percent)}" for w in heavy[:phases] if w.weight_percent)
+        doubt = {"possible": "?", "trace": " (trace)"}
+        named = ", ".join(
+            f"{w.name}{doubt.get(w.status, '')} {_percent(w.weight_percent)}" for w in heavy[:phases] if w.weight_percent
+        )
         more = len([w for w in heavy[phases:] if w.weight_percent])
         named += f", {more} more" if more else ""
         open_ = ", ".join(f.name for f in result.findings.of_status("possible"))
@@ -330,15 +340,16 @@ def batch_table(results: Sequence[SampleResult], console: Console, *, phases: in
     console.print(table)
 
 
-def cautions_of(results: Iterable[SampleResult]) -> list[str]:
-    """Cautions of many samples: the general ones, then those of single samples with their names."""
+def cautions_of(results: Sequence[SampleResult]) -> list[str]:
+    """Cautions of many samples: those of all samples, then those of some with their names; the general ones without any."""
     samples: dict[str, list[str]] = {}
     for result in results:
         for caution in result.cautions:
             samples.setdefault(caution, []).append(result.sample)
-    out = list(GENERAL_CAUTIONS)
+    shared = [caution for caution, names in samples.items() if len(names) == len(results)]
+    out = shared or list(GENERAL_CAUTIONS)
     for caution, names in samples.items():
-        if caution not in GENERAL_CAUTIONS:
+        if len(names) < len(results):
             more = f" and {len(names) - 5} more" if len(names) > 5 else ""
             out.append(f"{caution} ({', '.join(names[:5])}{more})")
     return out

@@ -17,7 +17,7 @@ _GAUSS_AREA = float(np.sqrt(np.pi / _GAUSS))  # area of a Gaussian of unit heigh
 _LORENTZ_AREA = float(np.pi / 2)
 _SHAPE_PRIOR = 1.2  # standard deviation of logit(eta): weak lines do not tell their shape
 _WIDTH_RATIO = 4.0  # the fit may change the width found by the search by this factor
-_EVALUATIONS = 25
+_EVALUATIONS = 20
 _RESTARTS = 3
 
 
@@ -110,6 +110,7 @@ class _Group:
         self.loose = max(0.03 * float(np.median(background)), 0.5 * float(np.median(sigma)))
 
     def start(self) -> NDArray[np.float64]:
+        """Parameters to begin with: heights from a linear fit at the given positions and widths."""
         eta = np.full(self.count, 0.5)
         basis = [pseudo_voigt(self.x, c, w, 0.5, self.radiation) for c, w in zip(self.centres, self.widths, strict=True)]
         matrix = np.vstack([*basis, self.loose * np.ones_like(self.x)]).T * self.weight[:, None]
@@ -197,7 +198,8 @@ def fit_group(
     Returns
     -------
     GroupFit
-        Errors are those of the covariance, scaled up by the reduced chi-square when that is above 1, never down.
+        Errors are those of the covariance, scaled up by the reduced chi-square around each line when that is above 1,
+        never down.
     """
     step = float(np.median(np.diff(x)))
     for _ in range(_RESTARTS):
@@ -227,7 +229,7 @@ def _solve(group: _Group) -> NDArray[np.float64]:
 
     solution = least_squares(
         lambda p: both(p)[0], start, jac=lambda p: both(p)[1], method="lm", max_nfev=_EVALUATIONS,
-        xtol=1e-4, ftol=1e-5, gtol=1e-8, x_scale=np.maximum(np.abs(start), 1.0),
+        xtol=1e-4, ftol=1e-4, gtol=1e-6, x_scale=np.maximum(np.abs(start), 1.0),
     )  # fmt: skip
     return np.asarray(solution.x)
 
@@ -236,9 +238,13 @@ def _summary(group: _Group, p: NDArray[np.float64]) -> GroupFit:
     residual, jacobian = group.evaluate(p)
     centre, fwhm, eta, amplitude = group.physical(p)
     freedom = max(group.x.size - 4 * group.count, 1)
-    inflation = max(1.0, float(residual @ residual) / freedom)
-    covariance = np.linalg.pinv(jacobian.T @ jacobian, rcond=1e-12, hermitian=True) * inflation
-    errors = np.sqrt(np.maximum(np.diag(covariance), 0.0))[:-2].reshape(group.count, 4)
+    # misfit is judged beside each line, so that a badly described neighbour does not spoil the others
+    squares = residual[: group.x.size] ** 2 * group.x.size / freedom
+    near = np.abs(group.x[:, None] - centre) < 1.2 * fwhm
+    inflation = np.maximum(1.0, squares @ near / np.maximum(near.sum(axis=0), 1))
+    covariance = np.linalg.pinv(jacobian.T @ jacobian, rcond=1e-12, hermitian=True)
+    variances = np.maximum(np.diag(covariance), 0.0)[:-2].reshape(group.count, 4)
+    errors = np.sqrt(variances * inflation[:, None])
     reach = group.reach * (1 - np.tanh(p[:-2:4]) ** 2)
     stretch = (fwhm - group.least) * (group.most - fwhm) / (group.most - group.least)
     per_height = fwhm * (eta * _LORENTZ_AREA + (1 - eta) * _GAUSS_AREA)
@@ -251,7 +257,7 @@ def _summary(group: _Group, p: NDArray[np.float64]) -> GroupFit:
             per_height[i],
         ])  # fmt: skip
         block = covariance[4 * i + 1 : 4 * i + 4, 4 * i + 1 : 4 * i + 4]
-        area_error[i] = np.sqrt(max(float(gradient @ block @ gradient), 0.0))
+        area_error[i] = np.sqrt(max(float(gradient @ block @ gradient), 0.0) * inflation[i])
     linear = np.append(np.arange(3, 4 * group.count, 4), [p.size - 2, p.size - 1])
     held = np.linalg.pinv(jacobian[:, linear].T @ jacobian[:, linear], rcond=1e-12, hermitian=True)
     spread = np.sqrt(np.maximum(np.diag(held)[:-2], 1e-30))

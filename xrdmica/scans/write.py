@@ -65,8 +65,8 @@ def write_scan_csv(scan: Scan, path: str | Path) -> None:
     """
     tube = scan.radiation
     key = "radiation" if tube.name[0].isalpha() else "single wavelength" if len(tube.wavelengths) == 1 else "wavelength"
-    lines = [f"# {key}: {tube.name if key == 'radiation' else repr(tube.wavelength)}", f"# mount: {scan.mount}", f"# treatment: {scan.treatment.name}"]
-    lines.append("two_theta,counts,sigma")
+    value = tube.name if key == "radiation" else repr(tube.wavelength)
+    lines = [f"# {key}: {value}", f"# mount: {scan.mount}", f"# treatment: {scan.treatment.name}", "two_theta,counts,sigma"]
     rows = zip(scan.two_theta.tolist(), scan.counts.tolist(), scan.sigma.tolist(), strict=True)
     lines += [f"{angle!r},{counts!r},{sigma!r}" for angle, counts, sigma in rows]
     write_atomically(path, "\n".join(lines) + "\n")

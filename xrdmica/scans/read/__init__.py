@@ -15,11 +15,11 @@ from io import BytesIO
 from pathlib import Path
 from typing import Any
 
-from xrdmica.errors import ScanError
+from xrdmica.errors import ScanError, SheetError
 from xrdmica.radiation import Radiation
 from xrdmica.scans.names import guess_from_name
 from xrdmica.scans.read.finish import finish
-from xrdmica.scans.read.raw import NotAScanError
+from xrdmica.scans.read.raw import NotAScanError, RawScan
 from xrdmica.scans.read.refuse import refuse_foreign, refuse_unknown
 from xrdmica.scans.scan import Mount, RadiationOrigin, Scan
 from xrdmica.scans.treatment import Treatment
@@ -85,8 +85,8 @@ def read_scan(
     raw = reader.read(data, path)
     guess = guess_from_name(path)
     if mount is None and state is None:
-        mount, state = guess.mount, guess.treatment
-        raw = raw.noted(*guess.notes)
+        mount, state, notes = _said_in_header(raw) or (guess.mount, guess.treatment, guess.notes)
+        raw = raw.noted(*notes)
     elif mount is None:
         mount = "random" if state is not None and state.condition == "none" else "oriented"
     elif state is None:
@@ -94,6 +94,19 @@ def read_scan(
         raw = raw.noted(f"treatment was taken as {state.name}")
     assert state is not None
     return finish(raw, str(path), radiation=tube, radiation_origin=radiation_origin, mount=mount, treatment=state)
+
+
+def _said_in_header(raw: RawScan) -> tuple[Mount, Treatment, tuple[str, ...]] | None:
+    """Mount and treatment when the header gives both in the words of the sample sheet, as `write_scan_csv` does."""
+    mounts: dict[str, Mount] = {"oriented": "oriented", "random": "random"}
+    mount = mounts.get(raw.metadata.get("mount", ""))
+    try:
+        state = Treatment.parse(raw.metadata.get("treatment", ""))
+    except SheetError:
+        return None
+    if mount is None:
+        return None
+    return mount, state, (f"mount {mount} and treatment {state.name} were read from the header of the file",)
 
 
 def _content(path: Path) -> bytes:

@@ -7,7 +7,7 @@ from pathlib import Path
 from xrdmica.errors import ScanError
 from xrdmica.scans.read.raw import NotAScanError
 
-__all__ = ["refuse_foreign"]
+__all__ = ["refuse_foreign", "refuse_unknown"]
 
 _EXPORT = "export the scan from the diffractometer as two columns of text, two-theta and counts"
 # first bytes of common containers (published file signatures)

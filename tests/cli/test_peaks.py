@@ -1,0 +1,93 @@
+"""The command `peaks`."""
+
+from __future__ import annotations
+
+import csv
+import json
+from pathlib import Path
+
+import numpy as np
+import pytest
+from click.testing import CliRunner
+
+from xrdmica.cli.main import main
+from xrdmica.scans.figure import peak_figure
+from xrdmica.scans.peaks import find_peaks
+from xrdmica.scans.scan import Scan
+from xrdmica.scans.write import write_scan_csv
+
+CENTRES = (8.85, 17.7, 26.7)
+
+
+@pytest.fixture
+def scan() -> Scan:
+    x = np.arange(5, 35, 0.02)
+    model = np.full_like(x, 120.0)
+    for centre in CENTRES:
+        model = model + 900 * np.exp(-4 * np.log(2) * ((x - centre) / 0.25) ** 2)
+    return Scan.from_arrays(x, np.random.default_rng(1).poisson(model), radiation="CuKa1")
+
+
+@pytest.fixture
+def file(scan: Scan, tmp_path: Path) -> Path:
+    path = tmp_path / "S1_AD.csv"
+    write_scan_csv(scan, path)
+    return path
+
+
+def test_table_and_files(file: Path, tmp_path: Path) -> None:
+    out = tmp_path / "out"
+    out.mkdir()
+    arguments = ["peaks", str(file), "--csv", str(out / "p.csv"), "--json", str(out / "p.json"), "--figure", str(out / "p.png")]
+    result = CliRunner().invoke(main, arguments)
+    assert result.exit_code == 0, result.output
+    assert "3 peaks" in result.stdout
+    # Bragg's law for 8.85 degrees and 1.54059 angstrom gives 9.984
+    assert "9.98" in result.stdout
+    assert "read from the header" in result.stderr
+    with (out / "p.csv").open() as stream:
+        rows = list(csv.DictReader(stream))
+    np.testing.assert_allclose([float(row["two_theta"]) for row in rows], CENTRES, atol=0.02)
+    (entry,) = json.loads((out / "p.json").read_text())
+    assert entry["radiation"] == "CuKa1"
+    np.testing.assert_allclose([peak["two_theta"] for peak in entry["peaks"]], CENTRES, atol=0.02)
+    assert (out / "p.png").read_bytes().startswith(b"\x89PNG")
+    assert sorted(path.name for path in out.iterdir()) == ["p.csv", "p.json", "p.png"]
+
+
+def test_several_files_and_limit(file: Path, scan: Scan) -> None:
+    limit = max(peak.height_sigma for peak in find_peaks(scan)) + 1
+    result = CliRunner().invoke(main, ["peaks", str(file), str(file), "--minimum-sigma", f"{limit:.2f}"])
+    assert result.exit_code == 0
+    assert result.stdout.count(": 0 peaks") == 2
+
+
+@pytest.mark.parametrize(
+    ("arguments", "sentence"),
+    [
+        (["none.xy"], "there is no such file"),
+        (["."], "this is a folder"),
+        ([], "Missing argument"),
+        (["FILE", "--radiation", "Xx"], "radiation 'Xx' is not known"),
+        (["FILE", "--minimum-sigma", "0"], "is not in the range"),
+        (["FILE", "--figure", "p.gif"], "end the name with .png, .svg or .pdf"),
+        (["FILE", "--csv", "/nowhere/p.csv"], "/nowhere/p.csv: cannot be written"),
+    ],
+)
+def test_wrong_use_is_one_sentence(file: Path, arguments: list[str], sentence: str) -> None:
+    result = CliRunner().invoke(main, ["peaks", *(str(file) if word == "FILE" else word for word in arguments)])
+    assert result.exit_code == 2
+    assert sentence in " ".join(result.stderr.split())
+    assert "Traceback" not in result.output
+
+
+def test_figure_shows_scan_background_and_spacings(scan: Scan) -> None:
+    peaks = find_peaks(scan)
+    figure = peak_figure([(scan, peaks), (scan, ())])
+    first, second = figure.axes
+    assert {text.get_text() for text in first.texts} == {f"{peak.d_spacing:.2f}" for peak in peaks}
+    assert len(peaks) == 3
+    np.testing.assert_array_equal(first.lines[0].get_ydata(), scan.counts)
+    assert [text.get_text() for text in first.get_legend().get_texts()] == ["scan", "background", "background + peaks"]
+    assert not second.texts
+    assert "2θ" in first.get_xlabel()

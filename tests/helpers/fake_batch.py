@@ -1,0 +1,97 @@
+"""Stand-ins for samples and their analysis, importable in worker processes."""
+
+from __future__ import annotations
+
+import os
+import time
+from dataclasses import dataclass, replace
+from pathlib import Path
+
+import numpy as np
+from finished_sample import build_result
+
+from xrdmica.errors import FitError
+from xrdmica.results import Findings, SampleResult
+from xrdmica.scans.scan import Sample, Scan
+
+
+@dataclass(frozen=True)
+class FakeSettings:
+    radiation: str | None = None
+    phases: tuple[str, ...] = ()
+    instrument: str | None = None
+    curves: bool = True
+
+
+@dataclass(frozen=True)
+class FakeRow:
+    path: Path
+
+
+@dataclass(frozen=True)
+class FakeEntry:
+    """A sample that needs no files; `path` is its one input."""
+
+    name: str
+    rows: tuple[FakeRow, ...] = ()
+
+    def load(self) -> Sample:
+        angle = np.linspace(2, 40, 60)
+        scan = Scan.from_arrays(angle, np.ones(60), source="none.xy")
+        return Sample(self.name, (replace(scan),))
+
+
+def analyse(sample: Sample, settings: FakeSettings) -> SampleResult:
+    """The name of the sample says what happens to it."""
+    if "bad" in sample.name:
+        raise FitError(f"sample {sample.name}: nothing to fit", fix="measure it again")
+    if "bug" in sample.name:
+        raise ZeroDivisionError("a mistake in the program")
+    if "killer" in sample.name:
+        os._exit(7)
+    if "slow" in sample.name:
+        time.sleep(0.3)
+    result = build_result(sample.name, curves=settings.curves, points=60)
+    return result.model_copy(update={"curves": result.curves[:1]})
+
+
+def identify(sample: Sample, phases: object = None, instrument: object = None) -> Findings:
+    """The findings of `analyse`."""
+    return analyse(sample, FakeSettings(curves=False)).findings
+
+
+def load_and_analyse(entry: FakeEntry) -> SampleResult:
+    return analyse(entry.load(), FakeSettings())
+
+
+def double(value: int) -> int:
+    return 2 * value
+
+
+def die_once(marker: str) -> str:
+    """Kill the process the first time, work the second time."""
+    if Path(marker).exists():
+        return "second"
+    Path(marker).write_text("x")
+    os._exit(3)
+
+
+def die_or_double(value: int) -> int:
+    if value == 3:
+        os._exit(9)
+    return 2 * value
+
+
+def thread_variable(name: str) -> str | None:
+    return os.environ.get(name)
+
+
+class UnpickleableError(Exception):
+    """Cannot be built again from its arguments, which breaks a naive pool."""
+
+    def __init__(self, one: int, two: int) -> None:
+        super().__init__(f"{one} and {two}")
+
+
+def raise_odd(value: int) -> int:
+    raise UnpickleableError(value, value)
