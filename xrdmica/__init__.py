@@ -14,7 +14,7 @@ from xrdmica._version import __version__
 if TYPE_CHECKING:
     from xrdmica.batch.analyse import Settings, analyse_sample
     from xrdmica.batch.run import run_batch
-    from xrdmica.batch.sheet import read_sample
+    from xrdmica.batch.samples import read_sample
     from xrdmica.chemistry.formula import SiteFormula
     from xrdmica.crystals.layer import Layer, build_layer
     from xrdmica.crystals.library import Phase, all_phases, load_phase
@@ -54,7 +54,7 @@ _PLACES = {
     "load_instrument": "xrdmica.diffraction.optics",
     "load_phase": "xrdmica.crystals.library",
     "powder_pattern": "xrdmica.diffraction.powder",
-    "read_sample": "xrdmica.batch.sheet",
+    "read_sample": "xrdmica.batch.samples",
     "read_scan": "xrdmica.scans.read",
     "run_batch": "xrdmica.batch.run",
     "screen_swelling": "xrdmica.interpret.swelling",

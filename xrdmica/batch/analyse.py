@@ -10,17 +10,12 @@ from xrdmica.diffraction.optics import Instrument, load_instrument
 from xrdmica.estimate.proportions import estimate_examined
 from xrdmica.identify.decide import examine
 from xrdmica.interpret.swelling import screen_swelling
-from xrdmica.results import SampleResult, ScanSummary
+from xrdmica.report.cautions import GENERAL_CAUTIONS
+from xrdmica.report.scans import scan_summaries
+from xrdmica.results import SampleResult
 from xrdmica.scans.scan import Sample
 
-__all__ = ["CAUTIONS", "Settings", "analyse_sample"]
-
-CAUTIONS = (
-    "X-rays, ethylene glycol and glycerol, furnaces and fine dust (respirable silica) are hazards: follow the local rules.",
-    "The swelling verdict is a screening result, no design value: it defers to index and swell tests under the local code "
-    "and to a licensed engineer.",
-)
-
+__all__ = ["Settings", "analyse_sample"]
 
 @dataclass(frozen=True)
 class Settings:
@@ -68,14 +63,9 @@ def analyse_sample(sample: Sample, settings: Settings | None = None) -> SampleRe
     estimate = estimate_examined(examination)
     findings = examination.findings
     summaries = tuple(
-        ScanSummary(
-            label=label, file=scan.source, mount=scan.mount, treatment=scan.treatment.name, radiation=scan.radiation.name,
-            radiation_origin=scan.radiation_origin, points=scan.two_theta.size,
-            two_theta_range=(round(float(scan.two_theta[0]), 4), round(float(scan.two_theta[-1]), 4)),
-            displacement_mm=None if moved is None else round(moved, 3), notes=scan.notes,
-        )
-        for label, scan, moved in zip(sample.labels, sample.scans, estimate.displacements, strict=True)
-    )  # fmt: skip
+        summary if moved is None else summary.model_copy(update={"displacement_mm": round(moved, 3)})
+        for summary, moved in zip(scan_summaries(sample), estimate.displacements, strict=True)
+    )
     own = [c for f in findings.phases if f.status != "not_detected" for c in load_phase(f.phase).cautions]
     return SampleResult(
         sample=sample.name,
@@ -93,5 +83,5 @@ def analyse_sample(sample: Sample, settings: Settings | None = None) -> SampleRe
             "form factors": "ionic, with anomalous dispersion",
         },
         notes=sample.notes,
-        cautions=(*CAUTIONS, *dict.fromkeys(own)),
+        cautions=(*GENERAL_CAUTIONS, *dict.fromkeys(own)),
     )

@@ -136,6 +136,9 @@ def run(arguments: Sequence[str] | None = None) -> NoReturn:
     arguments : sequence of str, optional
         Command line without the program; by default that of the process.
     """
+    for name in ("OMP_NUM_THREADS", "OPENBLAS_NUM_THREADS", "MKL_NUM_THREADS"):
+        # the matrices here are small: threads of the linear algebra would cost more than they do
+        os.environ.setdefault(name, "1")
     for stream in (sys.stdout, sys.stderr):
         # a terminal that cannot show a letter gets a question mark, not a traceback
         reconfigure = getattr(stream, "reconfigure", None)

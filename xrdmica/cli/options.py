@@ -43,10 +43,10 @@ def _phases(ctx: click.Context, parameter: click.Parameter, value: tuple[str, ..
 
 
 def radiation_option(command: Command) -> Command:
-    """``--radiation``: the tube, where neither file nor sheet says it."""
+    """``--radiation``: the tube; goes before what a file says, a sheet's own column goes before it."""
     return click.option(
         "--radiation", metavar="TUBE", callback=_radiation,
-        help="Tube (Cu, Co, Fe, Cr, Mo) or wavelength in angstrom, for scans that do not say it themselves.",
+        help="Tube (Cu, Co, Fe, Cr, Mo) or wavelength in angstrom; a sheet's own column goes before it, a file's header after it.",
     )(command)  # fmt: skip
 
 

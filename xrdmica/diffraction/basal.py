@@ -15,8 +15,8 @@ from xrdmica.diffraction.scattering import FormFactors, anomalous, form_factor
 from xrdmica.radiation import Radiation
 
 __all__ = [
-    "PatternGrid", "StackHeights", "basal_intensity", "basal_pattern", "interference", "layer_amplitude",
-    "lognormal_heights", "make_grid", "on_scan", "smooth_amplitude",
+    "PatternGrid", "Sampling", "StackHeights", "basal_intensity", "basal_pattern", "interference", "layer_amplitude",
+    "lognormal_heights", "make_grid", "on_scan", "sample_points", "smooth_amplitude",
 ]  # fmt: skip
 
 ComplexArray = NDArray[np.complex128]
@@ -198,7 +198,66 @@ class PatternGrid:
 
     def factor(self, orientation_spread: float) -> NDArray[np.float64]:
         """Lorentz-polarisation and mount factor on the grid, shape (g,)."""
-        return lorentz_factor(self.two_theta, orientation_spread, self.instrument) * mount_factor(self.two_theta, self.instrument)
+        return _factor(self, orientation_spread)
+
+
+@lru_cache(maxsize=128)
+def _factor(grid: PatternGrid, orientation_spread: float) -> NDArray[np.float64]:
+    return lorentz_factor(grid.two_theta, orientation_spread, grid.instrument) * mount_factor(grid.two_theta, grid.instrument)
+
+
+@dataclass(frozen=True, eq=False)
+class Sampling:
+    """Where the points of a scan lie on a grid, for each line of the tube.
+
+    Attributes
+    ----------
+    weights : tuple of float
+        Share of each line.
+    index : tuple of ndarray of int, each (n,)
+        Grid point below.
+    part : tuple of ndarray, each (n,)
+        Fraction of the way to the next one.
+    """
+
+    weights: tuple[float, ...]
+    index: tuple[NDArray[np.int64], ...]
+    part: tuple[NDArray[np.float64], ...]
+
+    def read(self, curves: NDArray[np.float64]) -> NDArray[np.float64]:
+        """Curves on the grid (..., g) at the points of the scan (..., n), all lines added."""
+        total = np.zeros((*curves.shape[:-1], self.part[0].size))
+        for weight, index, part in zip(self.weights, self.index, self.part, strict=True):
+            total += curves[..., index] * (weight * (1 - part)) + curves[..., index + 1] * (weight * part)
+        return total
+
+
+def sample_points(
+    grid: PatternGrid, two_theta: NDArray[np.float64], displacement: float = 0.0, zero_shift: float = 0.0
+) -> Sampling:
+    """Place the points of a scan on a grid.
+
+    Parameters
+    ----------
+    grid : PatternGrid
+    two_theta : ndarray, shape (n,)
+        Angles of the scan [degree].
+    displacement : float
+        [mm]
+    zero_shift : float
+        Added to every calculated angle [degree].
+    """
+    true_angle = two_theta - displacement_shift(two_theta, displacement, grid.instrument) - zero_shift
+    sine = np.sin(np.radians(true_angle) / 2)
+    weights, indices, parts = [], [], []
+    for ratio, weight in wavelength_ratios(grid.radiation):
+        position = (2 * np.degrees(np.arcsin(np.clip(sine / ratio, -1, 1))) - grid.two_theta[0]) / grid.step
+        position = np.clip(position, 0, grid.two_theta.size - 1.000001)
+        index = position.astype(np.int64)
+        weights.append(weight)
+        indices.append(index)
+        parts.append(position - index)
+    return Sampling(tuple(weights), tuple(indices), tuple(parts))
 
 
 def make_grid(two_theta: NDArray[np.float64], radiation: Radiation, instrument: Instrument) -> PatternGrid:
@@ -267,6 +326,7 @@ def on_scan(
     fwhm: float | None = None,
     displacement: float = 0.0,
     zero_shift: float = 0.0,
+    sampling: Sampling | None = None,
 ) -> NDArray[np.float64]:
     """What the instrument makes of a scattering curve: Lorentz factor, doublet, profile, displacement.
 
@@ -285,6 +345,8 @@ def on_scan(
         [mm]
     zero_shift : float
         Added to every calculated angle [degree].
+    sampling : Sampling, optional
+        From `sample_points` with the same angles and shifts, when many curves are read.
 
     Returns
     -------
@@ -293,21 +355,7 @@ def on_scan(
     instrument = grid.instrument
     curve = intensity * grid.factor(orientation_spread)
     smeared = convolve_profile(curve, grid.step, instrument.fwhm if fwhm is None else fwhm, instrument.lorentzian)
-    true_angle = two_theta - displacement_shift(two_theta, displacement, instrument) - zero_shift
-    sine = np.sin(np.radians(true_angle) / 2)
-    total = np.zeros((*intensity.shape[:-1], two_theta.size))
-    for ratio, weight in wavelength_ratios(grid.radiation):
-        position = (2 * np.degrees(np.arcsin(np.clip(sine / ratio, -1, 1))) - grid.two_theta[0]) / grid.step
-        total += weight * _interpolate(smeared, position)
-    return total
-
-
-def _interpolate(curves: NDArray[np.float64], position: NDArray[np.float64]) -> NDArray[np.float64]:
-    """Linear interpolation of curves (..., g) at fractional grid positions (n,), clamped to the grid."""
-    position = np.clip(position, 0, curves.shape[-1] - 1.000001)
-    index = position.astype(np.int64)
-    part = position - index
-    return np.asarray(curves[..., index] * (1 - part) + curves[..., index + 1] * part)
+    return (sampling or sample_points(grid, two_theta, displacement, zero_shift)).read(smeared)
 
 
 def basal_pattern(

@@ -2,8 +2,9 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass, replace
-from functools import lru_cache
+from functools import cached_property, lru_cache
 from itertools import product
 
 import numpy as np
@@ -11,7 +12,7 @@ from numpy.typing import NDArray
 
 from xrdmica.crystals.layer import Layer, build_layer
 from xrdmica.crystals.library import Phase, State, load_phase
-from xrdmica.diffraction.basal import PatternGrid, basal_intensity, on_scan
+from xrdmica.diffraction.basal import PatternGrid, Sampling, basal_intensity, on_scan, sample_points
 from xrdmica.diffraction.optics import RANDOM_SPREAD
 from xrdmica.diffraction.powder import Reflections, powder_lines, powder_profile
 from xrdmica.diffraction.scattering import FormFactors
@@ -19,7 +20,7 @@ from xrdmica.diffraction.stacking import stack_intensity, two_kind_junctions
 from xrdmica.scans.scan import Mount
 from xrdmica.scans.treatment import Treatment
 
-__all__ = ["Component", "ExpectedLine", "View", "component_column", "components_for", "expected_lines"]
+__all__ = ["Component", "ExpectedLine", "View", "component_column", "component_columns", "components_for", "expected_lines"]
 
 _TYPICAL_LAYERS = 20.0
 
@@ -104,7 +105,12 @@ class View:
             orientation_spread=self.spread,
             fwhm=self.width,
             displacement=self.displacement,
+            sampling=self._sampling,
         )
+
+    @cached_property
+    def _sampling(self) -> Sampling:
+        return sample_points(self.grid, self.two_theta, self.displacement)
 
 
 @dataclass(frozen=True)
@@ -238,40 +244,55 @@ def cross_lines(component: Component, view: View, model: FormFactors = "ionic") 
     return _cross_lines(component.phase, (view.grid.radiation, round(float(low_d), 2)), model)
 
 
-def component_column(component: Component, view: View, model: FormFactors = "ionic") -> NDArray[np.float64]:
-    """Calculated scan of unit mass of one component.
+def component_columns(
+    components: Sequence[Component | None], view: View, model: FormFactors = "ionic"
+) -> NDArray[np.float64]:
+    """Calculated scans of unit mass of several components; the basal curves are smeared in one go.
 
     Companions lie at random in every mount; of sheet silicates in an oriented mount the basal lines alone are drawn.
 
     Parameters
     ----------
-    component : Component
+    components : sequence of Component or None, length j
+        None gives a column of zeros.
     view : View
     model : {"ionic", "neutral"}
 
     Returns
     -------
-    ndarray, shape (n,)
+    ndarray, shape (n, j)
         Intensity per unit of dry mass.
     """
-    total = np.zeros(view.two_theta.size)
-    if component.states:
-        total = view.seen(component_intensity(component, view.grid, model))
-        if view.mount == "oriented":
-            return total
+    out = np.zeros((view.two_theta.size, len(components)))
+    layered = [i for i, component in enumerate(components) if component is not None and component.states]
+    if layered:
+        curves = np.array([component_intensity(components[i], view.grid, model) for i in layered])
+        out[:, layered] = view.seen(curves).T
+    for i, component in enumerate(components):
+        if component is not None and (view.mount == "random" or not component.states):
+            out[:, i] += _crossed(component, view, model)
+    return out
+
+
+def component_column(component: Component, view: View, model: FormFactors = "ionic") -> NDArray[np.float64]:
+    """`component_columns` of a single component, shape (n,)."""
+    return component_columns([component], view, model)[:, 0]
+
+
+def _crossed(component: Component, view: View, model: FormFactors) -> NDArray[np.float64]:
+    """Part of a column that is drawn line by line."""
     lines = cross_lines(component, view, model)
-    if lines is not None:
-        size = 600.0 if not component.states else component.mean_layers * component.spacings[0]
-        total = total + powder_profile(
-            lines,
-            view.two_theta,
-            view.grid.radiation,
-            view.grid.instrument,
-            size=size,
-            displacement=view.displacement,
-            fwhm=view.width,
-        )
-    return total
+    if lines is None:
+        return np.zeros(view.two_theta.size)
+    return powder_profile(
+        lines,
+        view.two_theta,
+        view.grid.radiation,
+        view.grid.instrument,
+        size=600.0 if not component.states else component.mean_layers * component.spacings[0],
+        displacement=view.displacement,
+        fwhm=view.width,
+    )
 
 
 def expected_lines(component: Component, view: View, least_share: float = 0.02) -> tuple[ExpectedLine, ...]:

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from functools import lru_cache
+
 import numpy as np
 from numpy.typing import NDArray
 
@@ -44,13 +46,26 @@ def convolve_profile(values: NDArray[np.float64], step: float, fwhm: float, lore
     fwhm, lorentzian : float
         Of the profile [degree], 0 to 1.
     """
-    from scipy.signal import fftconvolve
+    from scipy.fft import irfft, next_fast_len, rfft
 
-    reach = min(max(round(8.0 * fwhm / step), 2), values.shape[-1] - 1)
+    count = values.shape[-1]
+    reach = min(max(round(8.0 * fwhm / step), 2), count - 1)
+    size = next_fast_len(count + 2 * reach, real=True)
+    padded = np.empty((*values.shape[:-1], count + 2 * reach))
+    padded[..., reach:-reach] = values
+    padded[..., :reach] = values[..., :1]
+    padded[..., -reach:] = values[..., -1:]
+    smeared = irfft(rfft(padded, size) * _kernel_spectrum(step, fwhm, lorentzian, reach, size), size)
+    return np.asarray(smeared[..., 2 * reach : 2 * reach + count])
+
+
+@lru_cache(maxsize=64)
+def _kernel_spectrum(step: float, fwhm: float, lorentzian: float, reach: int, size: int) -> NDArray[np.complex128]:
+    """Transform of the profile of unit sum: the same for every curve of a scan."""
+    from scipy.fft import rfft
+
     offsets = np.arange(-reach, reach + 1) * step
     # averaging over the cell keeps the area right when the profile is as narrow as the grid
     inner = (np.arange(5) - 2) / 5 * step
     kernel = pseudo_voigt(offsets[:, None] + inner, fwhm, lorentzian).mean(axis=1)
-    kernel = kernel / kernel.sum()
-    padded = np.pad(values, [(0, 0)] * (values.ndim - 1) + [(reach, reach)], mode="edge")
-    return np.asarray(fftconvolve(padded, np.broadcast_to(kernel, (*values.shape[:-1], kernel.size)), mode="valid", axes=-1))
+    return np.asarray(rfft(kernel / kernel.sum(), size))

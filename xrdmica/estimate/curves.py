@@ -24,7 +24,7 @@ def _rounded(values: np.ndarray[tuple[int], np.dtype[np.float64]], digits: int =
 
 
 def _marks(fitted: Fitted, k: int) -> tuple[Mark, ...]:
-    view = fitted.model.views(fitted.evaluation.values)[k]
+    view = fitted.evaluation.views[k]
     marks = []
     for j, candidate in enumerate(fitted.model.candidates):
         component = fitted.model.component(j, k, fitted.evaluation.values)

@@ -11,7 +11,7 @@ from numpy.typing import NDArray
 from xrdmica.crystals.library import load_phase
 from xrdmica.diffraction.columns import components_for
 from xrdmica.diffraction.optics import Instrument
-from xrdmica.estimate.curves import bare_curves, fitted_curves
+from xrdmica.estimate.curves import STRANGERS, bare_curves, fitted_curves
 from xrdmica.estimate.shares import TOTALS, Shares, expandable_share, membership, normalise
 from xrdmica.estimate.uncertainty import detection_limits, fit_covariance, model_shifts
 from xrdmica.identify.decide import Examination, examine
@@ -35,9 +35,10 @@ __all__ = ["Estimate", "estimate", "estimate_examined"]
 
 FloatArray = NDArray[np.float64]
 _Z95 = 1.959964
+_STRANGE_LIMIT = 0.15  # share of unassigned line intensity beyond which percentages of a powder would mean nothing
 _EXCHANGE_GROUPS = ("true mica", "chlorite")
 _UNITS = {"spacing": "angstrom", "layers": "layers", "fraction": "share", "exchange": "apfu", "spread": "degree",
-          "width": "factor", "displacement": "mm"}  # fmt: skip
+          "width": "factor", "displacement": "mm"}
 
 
 @dataclass(frozen=True, eq=False)
@@ -89,7 +90,7 @@ def _parameters(fitted: Fitted, errors: FloatArray) -> tuple[FittedParameter, ..
         at_limit = not knob.low + edge < value < knob.high - edge
         error_shown = float(error * shown) if logarithmic else float(error)
         words = {"layers": "mean layers", "spread": "orientation spread", "width": "instrument width",
-                 "exchange": "content of", "fraction": "share of first layer"}.get(knob.kind, knob.kind)  # fmt: skip
+                 "exchange": "content of", "fraction": "share of first layer"}.get(knob.kind, knob.kind)
         out.append(
             FittedParameter(
                 name=f"{owner}{words}{detail}{where}", value=round(shown, 5), unit=_UNITS[knob.kind], at_limit=at_limit,
@@ -202,7 +203,7 @@ def _groups(
         members = [
             f for f in findings.phases
             if (expandable.get(f.phase, 0.0) > 0 if total == "expandable layers" else f.group == total)
-        ]  # fmt: skip
+        ]
         status = _group_status(members, groups) if members else "not_detected"
         weight = low = high = None
         if shares is not None and status != "not_detected":
@@ -220,7 +221,14 @@ def _groups(
     return tuple(rows)
 
 
-def _notes(sample: Sample, fitted: Fitted | None, basis: Basis) -> tuple[str, ...]:
+def _strange_share(curves: Sequence[Curve]) -> float:
+    """Share of all line intensity that no phase of the library takes."""
+    strange = sum(max(sum(curve.contributions.get(STRANGERS, ())), 0.0) for curve in curves)
+    total = sum(max(sum(part), 0.0) for curve in curves for part in curve.contributions.values())
+    return strange / total if total > 0 else 0.0
+
+
+def _notes(sample: Sample, fitted: Fitted | None, basis: Basis, strange: float = 0.0) -> tuple[str, ...]:
     notes = [
         "weights are on a dry basis: structural OH counts, interlayer water and glycol do not",
         f"100 % is: {basis}; what gives no lines (amorphous matter) is not in it",
@@ -229,6 +237,10 @@ def _notes(sample: Sample, fitted: Fitted | None, basis: Basis) -> tuple[str, ..
         others = [c.phase for c in fitted.model.candidates if not load_phase(c.phase).is_sheet_silicate]
         if others:
             notes.append(f"seen, but outside the 100 % of an oriented mount: {', '.join(sorted(others))}")
+    if strange > 0.02:
+        notes.append(f"unassigned lines take {100 * strange:.0f} % of the line intensity")
+    if basis == "crystalline part" and strange > _STRANGE_LIMIT:
+        notes.append("no proportions: too much of the crystalline part is not in the library")
     if fitted is not None and not fitted.converged:
         notes.append(f"the fit {fitted.message}")
     return tuple(notes)
@@ -256,7 +268,7 @@ def _nothing(examination: Examination, basis: Basis) -> Estimate:
         sample=findings.sample, basis=basis, phases=rows,
         groups=_groups(findings, None, (), np.zeros((0, 0)), _expandable(examination, None)),
         quality=FitQuality(message="nothing to fit"), notes=_notes(examination.sample, None, basis),
-    )  # fmt: skip
+    )
     prepared = examination.arena.prepared
     return Estimate(proportions, bare_curves(prepared), None, tuple(None for _ in prepared))
 
@@ -281,9 +293,12 @@ def estimate_examined(examination: Examination) -> Estimate:
     counted = [
         j for j, name in enumerate(names)
         if fitted.evaluation.amounts[j] > 0 and (load_phase(name).is_sheet_silicate or basis == "crystalline part")
-    ]  # fmt: skip
+    ]
     amount_covariance, knob_errors = fit_covariance(fitted)
-    shares = normalise(fitted.evaluation.amounts, amount_covariance, counted) if counted else None
+    curves = fitted_curves(fitted)
+    strange = _strange_share(curves)
+    known = bool(counted) and (basis != "crystalline part" or strange <= _STRANGE_LIMIT)
+    shares = normalise(fitted.evaluation.amounts, amount_covariance, counted) if known else None
     covariance = np.zeros((0, 0))
     rows: tuple[PhaseWeight, ...]
     outside = _outsiders(examination)
@@ -300,10 +315,11 @@ def estimate_examined(examination: Examination) -> Estimate:
     groups = _groups(examination.findings, shares, names, covariance, _expandable(examination, fitted), hidden)
     proportions = Proportions(
         sample=examination.findings.sample, basis=basis, phases=rows, groups=groups,
-        parameters=_parameters(fitted, knob_errors), quality=_quality(fitted), notes=_notes(examination.sample, fitted, basis),
-    )  # fmt: skip
-    displacements = tuple(view.displacement for view in fitted.model.views(fitted.evaluation.values))
-    return Estimate(proportions, fitted_curves(fitted), fitted, displacements)
+        parameters=_parameters(fitted, knob_errors), quality=_quality(fitted),
+        notes=_notes(examination.sample, fitted, basis, strange),
+    )
+    displacements = tuple(view.displacement for view in fitted.evaluation.views)
+    return Estimate(proportions, curves, fitted, displacements)
 
 
 def estimate(sample: Sample, findings: Findings | None = None, instrument: Instrument | None = None) -> Proportions:

@@ -8,10 +8,10 @@ import numpy as np
 from numpy.typing import NDArray
 
 from xrdmica.crystals.library import load_phase
-from xrdmica.diffraction.columns import component_column
+from xrdmica.diffraction.columns import View, component_columns
 from xrdmica.diffraction.optics import lorentz_factor
 from xrdmica.matching.linear import system, tied_fit
-from xrdmica.matching.model import Candidate, SampleModel
+from xrdmica.matching.model import Candidate
 from xrdmica.matching.prepare import Prepared, background_terms
 from xrdmica.matching.solve import Fitted, jacobian
 
@@ -69,10 +69,10 @@ def _share(amounts: FloatArray, places: Sequence[int]) -> FloatArray:
     return np.asarray(part / total) if total > 0 else part
 
 
-def _one_phase_tilted(model: SampleModel, values: FloatArray, columns: Sequence[FloatArray], place: int) -> list[FloatArray]:
+def _one_phase_tilted(views: Sequence[View], columns: Sequence[FloatArray], place: int) -> list[FloatArray]:
     """Columns with the orientation spread of one phase made wider."""
     out = []
-    for view, column in zip(model.views(values), columns, strict=True):
+    for view, column in zip(views, columns, strict=True):
         changed = column
         if view.mount == "oriented":
             instrument, spread = view.grid.instrument, view.orientation_spread
@@ -104,16 +104,16 @@ def model_shifts(fitted: Fitted, places: Sequence[int]) -> FloatArray:
     for place in places:
         if not load_phase(model.candidates[place].phase).is_sheet_silicate:
             continue
-        tilted = _one_phase_tilted(model, values, columns, place)
+        tilted = _one_phase_tilted(evaluation.views, columns, place)
         shifts.append(_share(_refit(tilted, model.prepared, scales), places) - usual)
         scaled = evaluation.amounts.copy()
         scaled[place] *= 1 + _COMPOSITION
         shifts.append(_share(scaled, places) - usual)
-    neutral = []
-    for k, view in enumerate(model.views(values)):
-        parts = (model.component(j, k, values) for j in range(len(model.candidates)))
-        blank = np.zeros(view.two_theta.size)
-        neutral.append(np.column_stack([blank if c is None else component_column(c, view, "neutral") for c in parts]))
+    everything = range(len(model.candidates))
+    neutral = [
+        component_columns([model.component(j, k, values) for j in everything], view, "neutral")
+        for k, view in enumerate(evaluation.views)
+    ]
     shifts.append(_STANDING * (_share(_refit(neutral, model.prepared, scales), places) - usual))
     for terms in _STIFFNESS:
         other = [item.with_terms(background_terms(item.scan.two_theta, terms), item.strange) for item in model.prepared]
@@ -140,14 +140,11 @@ def detection_limits(fitted: Fitted, extra: Sequence[Candidate], places: Sequenc
         For the others [fraction].
     """
     model, evaluation = fitted.model, fitted.evaluation
-    views = model.views(evaluation.values)
     size = len(model.candidates)
     gram = np.zeros((size + len(extra),) * 2)
-    for k, (item, view, scale) in enumerate(zip(model.prepared, views, evaluation.scales, strict=True)):
-        blank = np.zeros(view.two_theta.size)
-        parts = (one.components[k] for one in extra)
-        more = [blank if c is None else component_column(c, view) for c in parts]
-        columns = np.column_stack([evaluation.columns[k], *more])
+    for k, (item, view, scale) in enumerate(zip(model.prepared, evaluation.views, evaluation.scales, strict=True)):
+        more = component_columns([one.components[k] for one in extra], view)
+        columns = np.hstack([evaluation.columns[k], more])
         gram += scale**2 * system(columns, item.scan.counts, item.weight, item.basis).gram
     active = np.flatnonzero(evaluation.amounts > 0)
     total = max(float(evaluation.amounts[list(places)].sum()), 1e-300)

@@ -172,8 +172,8 @@ def _convincing(ledger: Ledger, conditions: int) -> bool:
     return enough and ledger.missing_lines <= max(1, ledger.clear_lines // 2)
 
 
-def _status(phase: Phase, convincing: bool, rivals: Sequence[str], share: float, treated: bool) -> Status:
-    if not convincing or rivals or (phase.group in _NEED_TREATMENT and not treated):
+def _status(phase: Phase, convincing: bool, rivals: Sequence[str], share: float) -> Status:
+    if not convincing or rivals:
         return "possible"
     return "trace" if phase.is_sheet_silicate and share < _TRACE else "present"
 
@@ -192,11 +192,12 @@ def _kept_finding(arena: Arena, selection: Selection, place: int, labels: Sequen
     ledger = ledger_for(arena, selection, place, labels)
     common, rare = _rivals(arena, selection, place)
     conditions = len({item.scan.treatment.name for item in arena.prepared})
+    treated = ledger.moved or any(s.scan.treatment.condition in _TELLING for s in arena.prepared)
     convincing = _convincing(ledger, conditions)
     if not convincing:
         common, rare = _rivals(arena, selection, place, anywhere=True)
-    treated = ledger.moved or any(s.scan.treatment.condition in _TELLING for s in arena.prepared)
-    status = _status(phase, convincing, common, share, treated)
+    convincing = convincing and (treated or phase.group not in _NEED_TREATMENT)
+    status = _status(phase, convincing, common, share)
     alternatives = tuple(
         Alternative(phase=name, name=load_phase(name).name, told_by=_told_by(phase.id, name)) for name in (*common, *rare)
     )

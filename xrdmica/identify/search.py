@@ -10,7 +10,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from xrdmica.crystals.library import load_phase
-from xrdmica.diffraction.columns import Component, component_column
+from xrdmica.diffraction.columns import Component, component_columns
 from xrdmica.diffraction.optics import lorentz_factor
 from xrdmica.identify.align import fitted_spacing
 from xrdmica.identify.candidates import Hopeful
@@ -92,8 +92,10 @@ def _spread_ratio(item: Prepared, factor: float) -> NDArray[np.float64]:
 
 
 def _widened(component: Component) -> tuple[Component, ...]:
-    variable = load_phase(component.phase).variable("mean_layers")
-    if variable is None or not component.states or component.fraction is not None:
+    phase = load_phase(component.phase)
+    variable = phase.variable("mean_layers")
+    # a rare phase takes its stack height from the common one whose place it would take
+    if variable is None or not component.states or component.fraction is not None or phase.occurrence == "rare":
         return (component,)
     layers = [min(max(component.mean_layers * w, variable.minimum), variable.maximum) for w in _WIDTHS]
     return tuple(replace(component, mean_layers=value) for value in dict.fromkeys(layers))
@@ -113,7 +115,7 @@ def _first_guess(options: Sequence[tuple[Component, ...]], item: Prepared) -> li
     flat = [component for phase in options for component in phase]
     if not flat:
         return [np.zeros(0) for _ in options]
-    columns = np.column_stack([component_column(component, item.view) for component in flat])
+    columns = component_columns(flat, item.view)
     equations = system(columns, item.scan.counts, item.weight, item.basis)
     size = np.sqrt(np.maximum(np.diag(equations.gram), 1e-300))
     strength = nonnegative(equations.gram, equations.moment) * size
@@ -188,10 +190,7 @@ def build_arena(candidates: Sequence[Candidate], prepared: Sequence[Prepared]) -
     Arena
     """
     columns = tuple(
-        np.column_stack([_column(candidate.components[k], item) for candidate in candidates])
-        if candidates
-        else np.zeros((item.scan.two_theta.size, 0))
-        for k, item in enumerate(prepared)
+        component_columns([candidate.components[k] for candidate in candidates], item.view) for k, item in enumerate(prepared)
     )
     plates = np.array([load_phase(candidate.phase).is_sheet_silicate for candidate in candidates], dtype=bool)
     systems = {}
@@ -202,10 +201,6 @@ def build_arena(candidates: Sequence[Candidate], prepared: Sequence[Prepared]) -
             for a, ratio, item in zip(columns, ratios, prepared, strict=True)
         )
     return Arena(tuple(prepared), tuple(candidates), columns, systems)
-
-
-def _column(component: Component | None, item: Prepared) -> NDArray[np.float64]:
-    return np.zeros(item.scan.two_theta.size) if component is None else component_column(component, item.view)
 
 
 def _best_fit(arena: Arena, active: Sequence[int], factors: Sequence[float] = _SPREAD_FACTORS) -> tuple[float, TiedFit]:

@@ -11,6 +11,7 @@ from numpy.typing import NDArray
 __all__ = ["ScanSystem", "TiedFit", "nonnegative", "project", "project_vector", "system", "tied_fit"]
 
 FloatArray = NDArray[np.float64]
+_RIDGE = 1e-9  # keeps the factor of columns that are all but equal
 
 
 @dataclass(frozen=True, eq=False)
@@ -101,13 +102,12 @@ def nonnegative(gram: FloatArray, moment: FloatArray) -> FloatArray:
     if moment.size == 0:
         return np.zeros(0)
     size = np.sqrt(np.diag(gram))
-    values, vectors = np.linalg.eigh(gram / np.outer(size, size))
-    keep = values > 1e-10 * values[-1]
-    root = np.sqrt(values[keep])
-    matrix = root[:, None] * vectors[:, keep].T
-    target = (vectors[:, keep].T @ (moment / size)) / root
-    scaled, _ = nnls(matrix, target, maxiter=30 * moment.size)
-    return np.asarray(scaled / size, dtype=float)
+    scaled = gram / np.outer(size, size)
+    scaled[np.diag_indices_from(scaled)] += _RIDGE
+    root = np.linalg.cholesky(scaled)
+    target = np.linalg.solve(root, moment / size)
+    amounts, _ = nnls(root.T, target, maxiter=30 * moment.size)
+    return np.asarray(amounts / size, dtype=float)
 
 
 def _best_scales(systems: Sequence[ScanSystem], amounts: FloatArray) -> FloatArray:

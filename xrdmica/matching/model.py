@@ -9,7 +9,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from xrdmica.crystals.library import Phase, load_phase
-from xrdmica.diffraction.columns import Component, View, component_column, component_intensity, cross_lines
+from xrdmica.diffraction.columns import Component, View, component_column, component_columns, component_intensity, cross_lines
 from xrdmica.diffraction.optics import displacement_shift, lorentz_factor
 from xrdmica.matching.prepare import Prepared
 
@@ -129,11 +129,11 @@ class SampleModel:
                 component = turned(component, knob, float(value))
         return component
 
-    def columns(self, values: FloatArray) -> tuple[FloatArray, ...]:
-        """Columns of all scans, each (n_k, j)."""
-        views = self.views(values)
+    def columns(self, values: FloatArray, views: Sequence[View] | None = None) -> tuple[FloatArray, ...]:
+        """Columns of all scans, each (n_k, j); `views` when they are known already."""
+        views = self.views(values) if views is None else views
         return tuple(
-            np.column_stack([_column(self.component(j, k, values), view) for j in range(len(self.candidates))])
+            component_columns([self.component(j, k, values) for j in range(len(self.candidates))], view)
             for k, view in enumerate(views)
         )
 
@@ -256,6 +256,7 @@ class Evaluation:
     Attributes
     ----------
     values : ndarray, shape (p,)
+    views : tuple of View
     columns : tuple of ndarray, each (n_k, j)
     amounts : ndarray, shape (j,)
     scales : ndarray, shape (k,)
@@ -264,6 +265,7 @@ class Evaluation:
     """
 
     values: FloatArray
+    views: tuple[View, ...]
     columns: tuple[FloatArray, ...]
     amounts: FloatArray
     scales: FloatArray
@@ -288,7 +290,7 @@ def knob_derivative(model: SampleModel, evaluation: Evaluation, number: int) -> 
     dict of int to ndarray, shape (n_k,)
     """
     knob, value = model.knobs[number], float(evaluation.values[number])
-    views = model.views(evaluation.values)
+    views = evaluation.views
     out: dict[int, FloatArray] = {}
     if knob.phase < 0:
         for k in knob.scans:

@@ -82,12 +82,12 @@ def background_terms(two_theta: NDArray[np.float64], terms: int = 4) -> NDArray[
 
     Returns
     -------
-    ndarray, shape (n, terms + 2), or (n, terms) for a scan that starts above 12 degrees
+    ndarray, shape (n, terms + 3), or (n, terms) for a scan that starts above 12 degrees
     """
     x = 2 * (two_theta - two_theta[0]) / (two_theta[-1] - two_theta[0]) - 1
     low = two_theta[0] / two_theta
     columns = [np.polynomial.chebyshev.chebval(x, np.eye(terms)[k]) for k in range(terms)]
-    columns += [low, low**2] if two_theta[0] < 12 else []
+    columns += [low, low**2, low**4] if two_theta[0] < 12 else []
     return np.column_stack(columns)
 
 

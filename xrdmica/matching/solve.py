@@ -79,12 +79,13 @@ def evaluate(model: SampleModel, values: FloatArray, scales: FloatArray | None =
     scales : ndarray, shape (k,), optional
         Start values for the alternation, from an evaluation nearby.
     """
-    columns = model.columns(values)
+    views = model.views(values)
+    columns = model.columns(values, views)
     systems = [
         system(a, item.scan.counts, item.weight, item.basis) for a, item in zip(columns, model.prepared, strict=True)
     ]
     fit = tied_fit(systems, scales, rounds=8 if scales is None else 4)
-    return Evaluation(values.copy(), columns, fit.amounts, fit.scales, fit.chi_square)
+    return Evaluation(values.copy(), views, columns, fit.amounts, fit.scales, fit.chi_square)
 
 
 def residual(model: SampleModel, evaluation: Evaluation) -> FloatArray:

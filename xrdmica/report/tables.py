@@ -11,6 +11,7 @@ from rich.padding import Padding
 from rich.table import Table
 from rich.text import Text
 
+from xrdmica.report.cautions import GENERAL_CAUTIONS
 from xrdmica.report.files import all_notes
 from xrdmica.results import Evidence, Findings, PhaseFinding, PhaseWeight, SampleResult, ScanSummary
 
@@ -21,12 +22,6 @@ __all__ = [
     "GENERAL_CAUTIONS", "batch_table", "cautions_of", "console_for", "evidence_table", "list_section", "plain", "result_table",
     "verdict_words",
 ]  # fmt: skip
-
-GENERAL_CAUTIONS = (
-    "The swelling verdict is a screening result and no design value: index and swell tests under the local code, judged by "
-    "a licensed engineer, go before it.",
-    "X-rays, ethylene glycol, glycerol, furnaces and dust with respirable silica or fibres: follow the rules of the place.",
-)
 
 _WIDTH_OF_A_PIPE = 100
 _STATUS_WORDS = {"present": "present", "trace": "trace", "possible": "possible", "not_detected": "not detected"}
