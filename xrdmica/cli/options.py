@@ -46,7 +46,7 @@ def radiation_option(command: Command) -> Command:
     """``--radiation``: the tube; goes before what a file says, a sheet's own column goes before it."""
     return click.option(
         "--radiation", metavar="TUBE", callback=_radiation,
-        help="Tube (Cu, Co, Fe, Cr, Mo) or wavelength in angstrom; a sheet's own column goes before it, a file's header after it.",
+        help="Tube (Cu, Co, Fe, Cr, Mo) or wavelength in angstrom; a sheet's column goes before it, a file's header after it.",
     )(command)  # fmt: skip
 
 

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from dataclasses import dataclass
+from functools import cached_property
 
 import numpy as np
 from numpy.typing import NDArray
@@ -45,17 +46,14 @@ class Layer:
     area: float
     molar_mass: float
 
-    @property
+    @cached_property
     def centrosymmetric(self) -> bool:
         """Whether every atom has a twin at the opposite height."""
-        return all(
-            abs(self._count_at(ion, -height) - self._count_at(ion, height)) < 1e-9
-            for ion, height in zip(self.ions, self.z, strict=True)
-        )
-
-    def _count_at(self, ion: str, height: float) -> float:
-        here = [i == ion and abs(z - height) < 1e-6 for i, z in zip(self.ions, self.z, strict=True)]
-        return float(self.counts[np.array(here, dtype=bool)].sum())
+        content: dict[tuple[str, float], float] = {}
+        for ion, height, count in zip(self.ions, self.z, self.counts, strict=True):
+            for key, sign in (((ion, round(float(height), 5)), 1.0), ((ion, -round(float(height), 5)), -1.0)):
+                content[key] = content.get(key, 0.0) + sign * float(count)
+        return all(abs(rest) < 1e-9 for rest in content.values())
 
 
 def formula_with(phase: Phase, exchanges: Mapping[str, float]) -> SiteFormula:

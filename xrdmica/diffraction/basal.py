@@ -113,18 +113,69 @@ def layer_amplitude(layer: Layer, s: NDArray[np.float64], radiation: Radiation, 
     return total
 
 
-def smooth_amplitude(layer: Layer, s: NDArray[np.float64], radiation: Radiation, model: FormFactors = "ionic") -> ComplexArray:
-    """`layer_amplitude` by cubic spline over a coarse grid: an amplitude is far smoother than a scan is fine.
+def smooth_amplitude(layer: Layer, grid: PatternGrid, model: FormFactors = "ionic", *, upside_down: bool = False) -> ComplexArray:
+    """`layer_amplitude` on a grid, by cubic interpolation from coarser knots: an amplitude is far smoother than a scan is fine.
 
-    Parameters and result as `layer_amplitude`, with `s` rising or falling and even.
+    Parameters
+    ----------
+    layer : Layer
+    grid : PatternGrid
+    model : {"ionic", "neutral"}
+    upside_down : bool
+        The layer turned over.
+
+    Returns
+    -------
+    ndarray of complex, shape (g,)
     """
-    count = int(np.ceil(abs(s[-1] - s[0]) / _SMOOTH_STEP)) + 4
-    if count >= s.size:
-        return layer_amplitude(layer, s, radiation, model)
-    from scipy.interpolate import CubicSpline
+    knots = grid.knots
+    z = -layer.z if upside_down else layer.z
+    waves = np.exp(4j * np.pi * np.multiply.outer(z, knots.s) - np.multiply.outer(layer.b_iso, knots.s**2))
+    total = np.zeros(knots.s.shape, dtype=complex)
+    ions = np.array(layer.ions)
+    for ion in dict.fromkeys(layer.ions):
+        here = ions == ion
+        total += _ion_at_knots(ion, grid, model) * (layer.counts[here] @ waves[here])
+    return knots.read(total)
 
-    knots = np.linspace(s.min(), s.max(), count)
-    return np.asarray(CubicSpline(knots, layer_amplitude(layer, knots, radiation, model))(s))
+
+@lru_cache(maxsize=1024)
+def _ion_at_knots(ion: str, grid: PatternGrid, model: FormFactors) -> ComplexArray:
+    return np.asarray(form_factor(ion, grid.knots.s, model) + anomalous(ion, grid.radiation.energy_ev), dtype=np.complex128)
+
+
+@dataclass(frozen=True, eq=False)
+class Knots:
+    """Coarse points that carry smooth functions of s, and how to read them on a fine grid by four-point interpolation.
+
+    Attributes
+    ----------
+    s : ndarray, shape (q,)
+        [1/angstrom]
+    index : ndarray of int, shape (4, g)
+    weight : ndarray, shape (4, g)
+    """
+
+    s: NDArray[np.float64]
+    index: NDArray[np.int64]
+    weight: NDArray[np.float64]
+
+    def read(self, values: ComplexArray) -> ComplexArray:
+        """Values at the knots (q,) on the fine grid (g,)."""
+        return np.asarray((values[self.index] * self.weight).sum(axis=0))
+
+    @classmethod
+    def below(cls, s: NDArray[np.float64]) -> Knots:
+        """Knots for a rising fine grid."""
+        count = max(int(np.ceil((s[-1] - s[0]) / _SMOOTH_STEP)) + 4, 6)
+        knots = np.linspace(s[0], s[-1], count)
+        position = (s - s[0]) / (knots[1] - knots[0])
+        start = np.clip(position.astype(np.int64) - 1, 0, count - 4)
+        x = position - start
+        weight = np.array([
+            -(x - 1) * (x - 2) * (x - 3) / 6, x * (x - 2) * (x - 3) / 2, -x * (x - 1) * (x - 3) / 2, x * (x - 1) * (x - 2) / 6,
+        ])  # fmt: skip
+        return cls(knots, start + np.arange(4)[:, None], weight)
 
 
 @lru_cache(maxsize=64)
@@ -161,8 +212,9 @@ def interference(
     phase = 4 * np.pi * spacing * s
     if spacing_disorder <= 0:
         table = _interference_table(round(float(mean_layers), 6))
-        folded = np.abs(np.remainder(phase + np.pi, 2 * np.pi) - np.pi)
-        return np.interp(folded, np.linspace(0, np.pi, table.size), table)
+        place = np.abs(np.remainder(phase + np.pi, 2 * np.pi) - np.pi) * ((table.size - 1) / np.pi)
+        below = np.minimum(place.astype(np.int64), table.size - 2)
+        return np.asarray(table[below] + (place - below) * (table[below + 1] - table[below]))
     pairs = lognormal_heights(round(float(mean_layers), 6)).pair_counts
     pairs = pairs / pairs[0]
     step = np.exp(1j * phase - (4 * np.pi * s * spacing_disorder) ** 2 / 2)
@@ -195,6 +247,11 @@ class PatternGrid:
     def step(self) -> float:
         """Grid step [degree]."""
         return float(self.two_theta[1] - self.two_theta[0])
+
+    @cached_property
+    def knots(self) -> Knots:
+        """Coarse points for amplitudes."""
+        return Knots.below(self.s)
 
     def factor(self, orientation_spread: float) -> NDArray[np.float64]:
         """Lorentz-polarisation and mount factor on the grid, shape (g,)."""
@@ -308,11 +365,11 @@ def basal_intensity(
         Proportional to intensity per unit of dry mass, so that fitted scales are weights
         (w_i ~ S_i M_i area_i; per whole reflection this is the ZMV rule).
     """
-    amplitude = smooth_amplitude(layer, grid.s, grid.radiation, model)
+    amplitude = smooth_amplitude(layer, grid, model)
     squared = np.abs(amplitude) ** 2
     if not layer.centrosymmetric:
         # layers lie either way up in a mount, and with absorption 00l and 00-l differ
-        squared = (squared + np.abs(smooth_amplitude(layer, -grid.s, grid.radiation, model)) ** 2) / 2
+        squared = (squared + np.abs(smooth_amplitude(layer, grid, model, upside_down=True)) ** 2) / 2
     phi = interference(grid.s, layer.spacing, mean_layers, spacing_disorder)
     return squared * phi / (layer.molar_mass * layer.area)
 

@@ -148,9 +148,9 @@ def stack_intensity(
     from scipy.interpolate import CubicSpline
 
     # stacks of two kinds have no sharp lines: a third of the points carries them
-    s = grid.s[:: _COARSER] if grid.s.size > 12 * _COARSER else grid.s
-    s = s if s[-1] == grid.s[-1] else np.append(s, grid.s[-1])
-    amplitudes = np.array([smooth_amplitude(layer, s, grid.radiation, model) for layer in layers])
+    chosen = np.unique(np.append(np.arange(0, grid.s.size, _COARSER), grid.s.size - 1))
+    s = grid.s[chosen]
+    amplitudes = np.array([smooth_amplitude(layer, grid, model)[chosen] for layer in layers])
     spacings = np.array([layer.spacing for layer in layers])
     heights = lognormal_heights(round(float(mean_layers), 6))
     squared = CubicSpline(s, stack_interference(amplitudes, spacings, s, junctions, heights, spacing_disorder))(grid.s)
