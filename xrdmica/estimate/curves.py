@@ -16,6 +16,7 @@ from xrdmica.results import Curve, Mark
 __all__ = ["STRANGERS", "bare_curves", "fitted_curves"]
 
 STRANGERS = "unassigned lines"
+_VISIBLE = 0.003  # share of the calculated intensity below which unclaimed lines are not drawn
 _LEAST_MARK = {True: 0.03, False: 0.15}
 
 
@@ -50,13 +51,13 @@ def fitted_curves(fitted: Fitted) -> tuple[Curve, ...]:
         size = np.sqrt((terms**2).sum(axis=0))
         found = np.linalg.lstsq(terms / size, rest * item.weight, rcond=1e-10)[0] / size
         smooth = item.smooth @ found[: item.smooth.shape[1]]
-        strange = item.strange @ found[item.smooth.shape[1] :]
+        strange = np.asarray(item.strange @ found[item.smooth.shape[1] :])
         shown = {
             load_phase(c.phase).id: _rounded(parts[:, j])
             for j, c in enumerate(fitted.model.candidates)
             if evaluation.amounts[j] > 0
         }
-        if item.strange.shape[1]:
+        if strange.size and float(np.abs(strange).sum()) > _VISIBLE * float(np.abs(parts).sum()):
             shown[STRANGERS] = _rounded(strange)
         out.append(
             Curve(

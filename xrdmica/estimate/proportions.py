@@ -36,6 +36,7 @@ __all__ = ["Estimate", "estimate", "estimate_examined"]
 FloatArray = NDArray[np.float64]
 _Z95 = 1.959964
 _STRANGE_LIMIT = 0.15  # share of unassigned line intensity beyond which percentages of a powder would mean nothing
+_POOR_FIT = 8.0  # reduced chi-square of a powder beyond which the same holds
 _EXCHANGE_GROUPS = ("true mica", "chlorite")
 _UNITS = {"spacing": "angstrom", "layers": "layers", "fraction": "share", "exchange": "apfu", "spread": "degree",
           "width": "factor", "displacement": "mm"}
@@ -239,8 +240,11 @@ def _notes(sample: Sample, fitted: Fitted | None, basis: Basis, strange: float =
             notes.append(f"seen, but outside the 100 % of an oriented mount: {', '.join(sorted(others))}")
     if strange > 0.02:
         notes.append(f"unassigned lines take {100 * strange:.0f} % of the line intensity")
-    if basis == "crystalline part" and strange > _STRANGE_LIMIT:
-        notes.append("no proportions: too much of the crystalline part is not in the library")
+    if fitted is not None and basis == "crystalline part":
+        if strange > _STRANGE_LIMIT:
+            notes.append("no proportions: too much of the crystalline part is not in the library")
+        elif fitted.reduced_chi_square > _POOR_FIT:
+            notes.append("no proportions: the calculated powder does not match well enough to weigh its phases")
     if fitted is not None and not fitted.converged:
         notes.append(f"the fit {fitted.message}")
     return tuple(notes)
@@ -297,7 +301,8 @@ def estimate_examined(examination: Examination) -> Estimate:
     amount_covariance, knob_errors = fit_covariance(fitted)
     curves = fitted_curves(fitted)
     strange = _strange_share(curves)
-    known = bool(counted) and (basis != "crystalline part" or strange <= _STRANGE_LIMIT)
+    poor = strange > _STRANGE_LIMIT or fitted.reduced_chi_square > _POOR_FIT
+    known = bool(counted) and not (basis == "crystalline part" and poor)
     shares = normalise(fitted.evaluation.amounts, amount_covariance, counted) if known else None
     covariance = np.zeros((0, 0))
     rows: tuple[PhaseWeight, ...]

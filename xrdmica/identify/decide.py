@@ -27,6 +27,7 @@ _TRACE = 0.025  # share of the sheet silicates below which a phase is called a t
 _NEIGHBOUR = 0.45  # angstrom
 # layers whose spacing depends on what is between them are named only by what a treatment does to them (common practice)
 _NEED_TREATMENT = ("smectite", "interstratified", "vermiculite")
+_POOR = 4.0  # reduced chi-square
 _TELLING = ("glycolated", "glycerolated", "heated")
 
 
@@ -102,7 +103,8 @@ def _usual_first(arena: Arena, selection: Selection) -> Selection:
 
 def _only_visible(arena: Arena, selection: Selection, labels: Sequence[str]) -> Selection:
     """Drop what only fills in under the lines of other phases: it cannot be claimed, and the rest must do without it."""
-    hidden = [a for a in selection.active if ledger_for(arena, selection, a, labels).clear_lines == 0]
+    powder = all(item.scan.mount == "random" for item in arena.prepared)
+    hidden = [a for a in selection.active if _unclaimable(arena, ledger_for(arena, selection, a, labels), a, powder)]
     if not hidden:
         return selection
     weakest = min(hidden, key=lambda a: float(selection.need[a].sum()))
@@ -144,6 +146,15 @@ def _neighbours(arena: Arena, one: int, two: int) -> bool:
     )
 
 
+def _unclaimable(arena: Arena, ledger: Ledger, place: int, powder: bool) -> bool:
+    """Whether a kept candidate has nothing to show: no line of its own, more missing than found, no first line in a powder."""
+    if ledger.clear_lines == 0:
+        return True
+    if not load_phase(arena.candidates[place].phase).is_sheet_silicate:
+        return False
+    return ledger.missing_lines >= ledger.clear_lines or (powder and not ledger.first_line)
+
+
 def _rivals(
     arena: Arena, selection: Selection, place: int, *, anywhere: bool = False
 ) -> tuple[tuple[str, ...], tuple[str, ...]]:
@@ -164,8 +175,14 @@ def _rivals(
     return tuple(common), tuple(rare)
 
 
-def _convincing(ledger: Ledger, conditions: int) -> bool:
-    """Whether the lines suffice: two of its own, or one that moves with treatment or has a companion under other lines."""
+def _convincing(ledger: Ledger, conditions: int, doubtful: bool) -> bool:
+    """Whether the lines suffice: two of its own, or one that moves with treatment or has a companion under other lines.
+
+    A sheet silicate in a `doubtful` comparison (a powder of which much is not explained) never convinces: lines of
+    unknown phases fall on its own by chance.
+    """
+    if doubtful:
+        return False
     enough = ledger.clear_lines >= 2 or (
         ledger.clear_lines == 1 and (ledger.moved or (ledger.shared_lines >= 1 and conditions > 1))
     )
@@ -193,7 +210,8 @@ def _kept_finding(arena: Arena, selection: Selection, place: int, labels: Sequen
     common, rare = _rivals(arena, selection, place)
     conditions = len({item.scan.treatment.name for item in arena.prepared})
     treated = ledger.moved or any(s.scan.treatment.condition in _TELLING for s in arena.prepared)
-    convincing = _convincing(ledger, conditions)
+    powder = all(item.scan.mount == "random" for item in arena.prepared)
+    convincing = _convincing(ledger, conditions, powder and phase.is_sheet_silicate and selection.noise > _POOR)
     if not convincing:
         common, rare = _rivals(arena, selection, place, anywhere=True)
     convincing = convincing and (treated or phase.group not in _NEED_TREATMENT)

@@ -85,6 +85,8 @@ class Ledger:
     missing_lines : int
     moved : bool
         Whether the first line was clearly seen at different spacings after different treatments.
+    first_line : bool
+        Whether the first line stands out as a peak of its own in some scan.
     """
 
     readings: tuple[LineReading, ...]
@@ -93,6 +95,7 @@ class Ledger:
     shared_lines: int
     missing_lines: int
     moved: bool
+    first_line: bool
 
 
 def _calculated(arena: Arena, selection: Selection, scan: int) -> FloatArray:
@@ -108,7 +111,14 @@ def _fitted_residual(item: Prepared, total: FloatArray) -> FloatArray:
 
 
 def _read_line(
-    number: int, scan: int, line: ExpectedLine, item: Prepared, own: FloatArray, total: FloatArray, residual: FloatArray
+    number: int,
+    scan: int,
+    line: ExpectedLine,
+    item: Prepared,
+    own: FloatArray,
+    total: FloatArray,
+    residual: FloatArray,
+    noise: float,
 ) -> LineReading | None:
     view = item.view
     place = line.two_theta + float(displacement_shift(np.array(line.two_theta), view.displacement, view.grid.instrument))
@@ -118,7 +128,7 @@ def _read_line(
         return None
     height = float(own[window].max())
     independent = max(window.sum() * item.scan.step / max(item.scan.step, view.width / 3), 1.0)
-    significance = height * float(item.weight[window].mean()) * np.sqrt(min(independent, window.sum()))
+    significance = height * float(item.weight[window].mean()) * np.sqrt(min(independent, window.sum()) / noise)
     if significance < _MEASURABLE:
         return None
     w = item.weight[window] ** 2
@@ -205,7 +215,7 @@ def ledger_for(arena: Arena, selection: Selection, place: int, labels: Sequence[
         total = parts.sum(axis=1)
         residual = _fitted_residual(item, total)
         for number, line in enumerate(expected_lines(component, item.view), start=1):
-            reading = _read_line(number, k, line, item, parts[:, position], total, residual)
+            reading = _read_line(number, k, line, item, parts[:, position], total, residual, selection.noise)
             if reading is not None:
                 readings.append(reading)
     behaviour, moved = _behaviour(readings, arena, place, labels)
@@ -216,6 +226,12 @@ def ledger_for(arena: Arena, selection: Selection, place: int, labels: Sequence[
     rise = f"leaving it out raises chi-square by {need.sum():.0f}"
     fit = Evidence(kind="fit", text=rise, weight=round(float(np.clip(np.sqrt(max(need.sum(), 0)) / 10, 0, 3)), 2))
     return Ledger(
-        tuple(readings), (*lines, *behaviour, fit), len(clear), len(shared), sum(r.missing for r in readings), moved
+        tuple(readings),
+        (*lines, *behaviour, fit),
+        len(clear),
+        len(shared),
+        sum(r.missing for r in readings),
+        moved,
+        any(r.order in (1, -1) and r.clear and r.peak is not None for r in readings),
     )
 

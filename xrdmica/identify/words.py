@@ -34,7 +34,7 @@ def kept_reason(phase: Phase, status: Status, ledger: Ledger, rivals: Sequence[s
         return f"fits best, but only a treated mount (glycol, heating) can name {phase.name}: {lines}"
     if ledger.missing_lines:
         return f"would improve the fit, but {ledger.missing_lines} of its lines should be seen and are not; {lines}"
-    return f"would improve the fit, but that is too little to be sure: {lines}"
+    return f"would improve the fit, but what is seen is too little to be sure: {lines}"
 
 
 def absent_reason(one: Hopeful, labels: Sequence[str]) -> str:
