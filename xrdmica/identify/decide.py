@@ -85,20 +85,58 @@ def _compare(sample: Sample, phases: Sequence[Phase], instrument: Instrument) ->
         prepared, rest_again = refined(arena, chosen, rounds=5)
         arena = build_arena(rest_again, prepared)
         chosen = select(arena)
-    return considered, arena, _only_visible(arena, _usual_first(arena, _simplified(arena, chosen)), sample.labels)
+    labels = sample.labels
+    chosen = _only_visible(arena, _usual_first(arena, _simplified(arena, chosen), labels), labels)
+    return considered, *_fair_contest(arena, chosen, labels)
 
 
-def _usual_first(arena: Arena, selection: Selection) -> Selection:
+def _usual_first(arena: Arena, selection: Selection, labels: Sequence[str]) -> Selection:
     """Put a common phase in place of a rare one wherever it does nearly as well."""
     for place in selection.active:
         if load_phase(arena.candidates[place].phase).occurrence == "common":
             continue
-        common, _ = _rivals(arena, selection, place)
+        poor = ledger_for(arena, selection, place, labels).clear_lines < 2
+        common, _ = _rivals(arena, selection, place, anywhere=poor)
         costs = {i: swapped(arena, selection, place, i) for i, c in enumerate(arena.candidates) if c.phase in common}
         if costs:
             best = min(costs, key=lambda i: costs[i])
-            return _usual_first(arena, _among(arena, [*(a for a in selection.active if a != place), best]))
+            return _usual_first(arena, _among(arena, [*(a for a in selection.active if a != place), best]), labels)
     return selection
+
+
+def _fair_contest(arena: Arena, selection: Selection, labels: Sequence[str], tries: int = 4) -> tuple[Arena, Selection]:
+    """Refine close rivals too before one is preferred: a kept phase had the fit's attention, its rivals had not.
+
+    Parameters
+    ----------
+    arena, selection
+        As compared so far.
+    labels : sequence of str
+        Scan labels.
+    tries : int
+        Refinements allowed.
+
+    Returns
+    -------
+    Arena, Selection
+        With whatever did better in place.
+    """
+    for place in selection.active:
+        common, _ = _rivals(arena, selection, place, anywhere=False)
+        for name in common:
+            if tries <= 0:
+                return arena, selection
+            tries -= 1
+            rival = next(i for i, c in enumerate(arena.candidates) if c.phase == name)
+            trial = _among(arena, [*(a for a in selection.active if a != place), rival])
+            if rival not in trial.active:
+                continue
+            prepared, candidates = refined(arena, trial, rounds=5)
+            better = build_arena(candidates, prepared)
+            chosen = select(better)
+            if chosen.fit.chi_square < selection.fit.chi_square - 1.0 and len(chosen.active) <= len(selection.active):
+                return _fair_contest(better, _only_visible(better, chosen, labels), labels, tries)
+    return arena, selection
 
 
 def _only_visible(arena: Arena, selection: Selection, labels: Sequence[str]) -> Selection:
@@ -169,7 +207,11 @@ def _rivals(
         if not anywhere and name not in look_alikes and not _neighbours(arena, place, other):
             continue
         # a rival must also do most of what the kept one does, or everything would be one on a poor fit
-        limit = min(SWAP * selection.noise, 0.5 * float(selection.need[place].sum()))
+        need = float(selection.need[place].sum())
+        limit = min(SWAP * selection.noise, 0.5 * need)
+        if anywhere and _neighbours(arena, place, other):
+            # with so little of its own to show, whatever explains a fair part of the same line will do as well
+            limit = 0.7 * need
         if swapped(arena, selection, place, other) < limit:
             (common if load_phase(name).occurrence == "common" else rare).append(name)
     return tuple(common), tuple(rare)

@@ -1,0 +1,1 @@
+"""Calculated patterns of a phase or a formula, as tables and curves."""
