@@ -18,7 +18,9 @@ from xrdmica.matching.solve import Fitted, jacobian
 __all__ = ["detection_limits", "fit_covariance", "model_shifts"]
 
 FloatArray = NDArray[np.float64]
-_PHASE_SPREAD = 0.10  # relative difference of orientation between the phases of one mount, common practice
+# Relative difference of orientation between the phases of one mount: about 10 % is common practice; a little more, because
+# the Soller openings of the user's instrument are rarely known either.
+_PHASE_SPREAD = 0.12
 _COMPOSITION = 0.05  # relative error of |F|^2 from composition and displacement parameters, common practice
 _STANDING = 0.5  # part of the neutral/ionic difference that counts as one standard error
 _STIFFNESS = (3, 6)

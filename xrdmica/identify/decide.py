@@ -11,7 +11,7 @@ from xrdmica.diffraction.optics import Instrument
 from xrdmica.identify.align import align
 from xrdmica.identify.candidates import Hopeful, hopefuls
 from xrdmica.identify.evidence import Ledger, ledger_for
-from xrdmica.identify.search import KEEP, Arena, Selection, build_arena, refined, select, settle, swapped
+from xrdmica.identify.search import KEEP, RARE_FACTOR, Arena, Selection, build_arena, refined, select, settle, swapped
 from xrdmica.identify.strangers import with_strangers
 from xrdmica.identify.unassigned import unassigned_lines
 from xrdmica.identify.words import absent_reason, kept_reason, next_measurements, sample_notes
@@ -27,6 +27,9 @@ _TRACE = 0.025  # share of the sheet silicates below which a phase is called a t
 _NEIGHBOUR = 0.45  # angstrom
 # layers whose spacing depends on what is between them are named only by what a treatment does to them (common practice)
 _NEED_TREATMENT = ("smectite", "interstratified", "vermiculite")
+_TRIALS = 3
+_GOOD = 1.1  # reduced chi-square below which nothing is left to explain
+_BADLY = 500.0  # rise of chi-square
 _POOR = 4.0  # reduced chi-square
 _TELLING = ("glycolated", "glycerolated", "heated")
 
@@ -74,20 +77,20 @@ def _compare(sample: Sample, phases: Sequence[Phase], instrument: Instrument) ->
     arena = build_arena(candidates, prepared)
     usual = _without_rare(arena)
     selection = select(usual, coarse=True)
-    placed = {c.phase: c for c in usual.candidates}
     prepared, changed = refined(usual, selection)
-    placed.update({c.phase: c for c in changed})
+    usual, kept = _better_neighbours(build_arena(changed, prepared), selection.active)
+    placed = {c.phase: c for c in usual.candidates}
     rest = [placed.get(c.phase, c) for c in candidates]
-    arena = build_arena(rest, prepared)
+    arena = build_arena(rest, usual.prepared)
     chosen = select(arena)
-    first = {usual.candidates[a].phase for a in selection.active}
+    first = {usual.candidates[a].phase for a in kept}
     if {arena.candidates[a].phase for a in chosen.active} != first:
         prepared, rest_again = refined(arena, chosen, rounds=5)
         arena = build_arena(rest_again, prepared)
         chosen = select(arena)
     labels = sample.labels
     chosen = _only_visible(arena, _usual_first(arena, _simplified(arena, chosen), labels), labels)
-    return considered, *_fair_contest(arena, chosen, labels)
+    return considered, *_fair_contest(*_completed(arena, chosen, labels), labels)
 
 
 def _usual_first(arena: Arena, selection: Selection, labels: Sequence[str]) -> Selection:
@@ -102,6 +105,27 @@ def _usual_first(arena: Arena, selection: Selection, labels: Sequence[str]) -> S
             best = min(costs, key=lambda i: costs[i])
             return _usual_first(arena, _among(arena, [*(a for a in selection.active if a != place), best]), labels)
     return selection
+
+
+def _completed(arena: Arena, selection: Selection, labels: Sequence[str], tries: int = 2) -> tuple[Arena, Selection]:
+    """Take in what was dropped too early: once the rest is well placed, a phase may be needed after all."""
+    if not selection.active or tries <= 0:
+        return arena, selection
+    gains = {}
+    for place in range(len(arena.candidates)):
+        if place not in selection.active:
+            fit = tied_fit([s.subset([*selection.active, place]) for s in arena.systems[selection.factor]])
+            weight = RARE_FACTOR if load_phase(arena.candidates[place].phase).occurrence == "rare" else 1.0
+            gains[place] = (selection.fit.chi_square - fit.chi_square) / weight
+    best = max(gains, key=lambda a: gains[a], default=None)
+    if best is None or gains[best] < 2 * KEEP * selection.noise:
+        return arena, selection
+    prepared, candidates = refined(arena, _among(arena, [*selection.active, best]), rounds=5)
+    fuller = build_arena(candidates, prepared)
+    chosen = _only_visible(fuller, _simplified(fuller, select(fuller)), labels)
+    if chosen.fit.chi_square < selection.fit.chi_square - KEEP * selection.noise:
+        return _completed(fuller, chosen, labels, tries - 1)
+    return arena, selection
 
 
 def _fair_contest(arena: Arena, selection: Selection, labels: Sequence[str], tries: int = 4) -> tuple[Arena, Selection]:
@@ -142,11 +166,51 @@ def _fair_contest(arena: Arena, selection: Selection, labels: Sequence[str], tri
 def _only_visible(arena: Arena, selection: Selection, labels: Sequence[str]) -> Selection:
     """Drop what only fills in under the lines of other phases: it cannot be claimed, and the rest must do without it."""
     powder = all(item.scan.mount == "random" for item in arena.prepared)
-    hidden = [a for a in selection.active if _unclaimable(arena, ledger_for(arena, selection, a, labels), a, powder)]
+    hidden = [a for a in selection.active if _unclaimable(arena, selection, a, labels, powder)]
     if not hidden:
         return selection
     weakest = min(hidden, key=lambda a: float(selection.need[a].sum()))
     return _only_visible(arena, _among(arena, [a for a in selection.active if a != weakest]), labels)
+
+
+def _held(arena: Arena, active: Sequence[int]) -> Selection:
+    """A fixed set of candidates with its fit, nothing tested."""
+    fit = tied_fit([s.subset(active) for s in arena.systems[1.0]])
+    noise = max(1.0, fit.chi_square / max(arena.points, 1))
+    return Selection(tuple(active), 1.0, fit, {}, noise)
+
+
+def _better_neighbours(arena: Arena, active: tuple[int, ...]) -> tuple[Arena, tuple[int, ...]]:
+    """Exchange kept phases for neighbours that fit better once refined: the coarse choice may have taken the wrong one.
+
+    Parameters
+    ----------
+    arena : Arena
+        Refined for the kept phases.
+    active : tuple of int
+        Their places.
+
+    Returns
+    -------
+    arena : Arena
+    active : tuple of int
+    """
+    held = _held(arena, active)
+    trials = []
+    for place in active:
+        for other in range(len(arena.candidates)):
+            if other not in active and _neighbours(arena, place, other):
+                swap = tuple(other if a == place else a for a in active)
+                trials.append((_held(arena, swap).fit.chi_square, swap))
+    for _, swap in sorted(trials)[:_TRIALS]:
+        if held.noise < _GOOD:
+            break
+        prepared, candidates = refined(arena, _held(arena, swap), rounds=5)
+        trial = build_arena(candidates, prepared)
+        result = _held(trial, swap)
+        if result.fit.chi_square < held.fit.chi_square:
+            return _better_neighbours(trial, swap)
+    return arena, active
 
 
 def _simplified(arena: Arena, selection: Selection) -> Selection:
@@ -184,10 +248,15 @@ def _neighbours(arena: Arena, one: int, two: int) -> bool:
     )
 
 
-def _unclaimable(arena: Arena, ledger: Ledger, place: int, powder: bool) -> bool:
-    """Whether a kept candidate has nothing to show: no line of its own, more missing than found, no first line in a powder."""
+def _unclaimable(arena: Arena, selection: Selection, place: int, labels: Sequence[str], powder: bool) -> bool:
+    """Whether a kept candidate has nothing to show: no line of its own, more missing than found, no first line in a powder.
+
+    One that is needed badly stays all the same: two phases may share every line and still both be there.
+    """
+    ledger = ledger_for(arena, selection, place, labels)
     if ledger.clear_lines == 0:
-        return True
+        rare = load_phase(arena.candidates[place].phase).occurrence == "rare"
+        return powder or rare or float(selection.need[place].sum()) < _BADLY * selection.noise
     if not load_phase(arena.candidates[place].phase).is_sheet_silicate:
         return False
     return ledger.missing_lines >= ledger.clear_lines or (powder and not ledger.first_line)

@@ -19,7 +19,7 @@ from xrdmica.matching.model import Candidate, build_model, spacing_limits
 from xrdmica.matching.prepare import Prepared
 from xrdmica.matching.solve import fit_model
 
-__all__ = ["KEEP", "Arena", "Selection", "build_arena", "refined", "select", "settle", "swapped"]
+__all__ = ["KEEP", "RARE_FACTOR", "Arena", "Selection", "build_arena", "refined", "select", "settle", "swapped"]
 
 _WIDTHS = (0.6, 1.6)  # factors on the usual stack height tried at first
 _SPREAD_FACTORS = (0.7, 1.0, 1.4)
