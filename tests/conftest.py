@@ -2,6 +2,11 @@
 
 from __future__ import annotations
 
+import os
+import shutil
+import sys
+import tempfile
+from collections.abc import Iterator
 from pathlib import Path
 
 import pytest
@@ -16,3 +21,23 @@ def shared() -> Path:
     if not folder.is_dir():
         pytest.skip("the folder 'shared' with published structures and measured scans is not beside the repository")
     return folder
+
+
+@pytest.fixture
+def unprivileged() -> Iterator[Path]:
+    """A folder to work in as a user who may not do everything, also where the tests run as root."""
+    if sys.platform == "win32":
+        pytest.skip("permissions work differently on Windows")
+    folder = Path(tempfile.mkdtemp(prefix="xrdmica-"))
+    folder.chmod(0o777)
+    root = os.geteuid() == 0
+    if root:
+        os.seteuid(65534)
+    try:
+        yield folder
+    finally:
+        if root:
+            os.seteuid(0)
+        for path in (folder, *folder.rglob("*")):
+            path.chmod(0o700)
+        shutil.rmtree(folder)

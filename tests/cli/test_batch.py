@@ -100,10 +100,9 @@ def test_output_that_cannot_be_used_is_one_sentence(tmp_path: Path) -> None:
     assert "is the folder with the scans" in result.stderr
 
 
-@pytest.mark.skipif(sys.platform == "win32" or os.geteuid() == 0, reason="root may write everywhere")
-def test_folder_without_permission(tmp_path: Path) -> None:
-    (tmp_path / "closed").mkdir(mode=0o500)
-    result = call(sheet(tmp_path, "S1"), "--out", tmp_path / "closed" / "out")
+def test_folder_without_permission(unprivileged: Path) -> None:
+    (unprivileged / "closed").mkdir(mode=0o500)
+    result = call(sheet(unprivileged, "S1"), "--out", unprivileged / "closed" / "out")
     assert result.exit_code == 2
     assert "cannot be written" in result.stderr
 

@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import gzip
-import os
 from pathlib import Path
 
 import numpy as np
@@ -88,9 +87,8 @@ def test_folder(tmp_path: Path) -> None:
         read_scan(tmp_path)
 
 
-@pytest.mark.skipif(os.geteuid() == 0, reason="the superuser may read everything")
-def test_no_permission(tmp_path: Path) -> None:
-    file = tmp_path / "scan.xy"
+def test_no_permission(unprivileged: Path) -> None:
+    file = unprivileged / "scan.xy"
     file.write_text(table())
     file.chmod(0)
     with pytest.raises(ScanError, match="no permission"):
