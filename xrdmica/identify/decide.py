@@ -281,7 +281,7 @@ def _rivals(
         if anywhere and _neighbours(arena, place, other):
             # with so little of its own to show, whatever explains a fair part of the same line will do as well
             limit = 0.7 * need
-        if swapped(arena, selection, place, other) < limit:
+        if swapped(arena, selection, place, other, hopeless=10 * limit) < limit:
             (common if load_phase(name).occurrence == "common" else rare).append(name)
     return tuple(common), tuple(rare)
 

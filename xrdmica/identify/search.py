@@ -249,10 +249,24 @@ def select(arena: Arena, *, coarse: bool = False) -> Selection:
         factors = _SPREAD_FACTORS if len(active) < 9 else (factor,)
 
 
-def swapped(arena: Arena, selection: Selection, out: int, into: int) -> float:
-    """Rise of chi-square when one kept candidate is replaced by another, at its own best orientation spread."""
-    others = [a for a in selection.active if a not in (out, into)]
-    _, fit = _best_fit(arena, [*others, into])
+def swapped(arena: Arena, selection: Selection, out: int, into: int, hopeless: float = float("inf")) -> float:
+    """Rise of chi-square when one kept candidate is replaced by another, at its own best orientation spread.
+
+    Parameters
+    ----------
+    arena, selection
+        The comparison so far.
+    out, into : int
+        Places of the candidates.
+    hopeless : float
+        Rise at the present orientation spread from which others are not tried.
+    """
+    active = [*(a for a in selection.active if a not in (out, into)), into]
+    _, here = _best_fit(arena, active, (selection.factor,))
+    rise = here.chi_square - selection.fit.chi_square
+    if rise > hopeless:
+        return rise
+    _, fit = _best_fit(arena, active)
     return fit.chi_square - selection.fit.chi_square
 
 

@@ -90,23 +90,26 @@ def nonnegative(gram: FloatArray, moment: FloatArray) -> FloatArray:
     ----------
     Lawson & Hanson (1974) Solving Least Squares Problems, through scipy.
     """
-    from scipy.optimize import nnls
-
-    alive = np.diag(gram) > 0
-    if not alive.all():
+    if moment.size == 0:
+        return np.zeros(0)
+    diagonal = gram.diagonal()
+    if not diagonal.min() > 0:
         # a phase that shows nothing here has no amount here
+        alive = diagonal > 0
         shown = np.zeros(moment.size)
         if alive.any():
             shown[alive] = nonnegative(gram[np.ix_(alive, alive)], moment[alive])
         return shown
-    if moment.size == 0:
-        return np.zeros(0)
-    size = np.sqrt(np.diag(gram))
-    scaled = gram / np.outer(size, size)
-    scaled[np.diag_indices_from(scaled)] += _RIDGE
+    size = np.sqrt(diagonal)
+    scaled = gram / (size[:, None] * size)
+    scaled.flat[:: moment.size + 1] += _RIDGE
+    free = np.asarray(np.linalg.solve(scaled, moment / size))
+    if free.min() >= 0:
+        return np.asarray(free / size)
+    from scipy.optimize import nnls
+
     root = np.linalg.cholesky(scaled)
-    target = np.linalg.solve(root, moment / size)
-    amounts, _ = nnls(root.T, target, maxiter=30 * moment.size)
+    amounts, _ = nnls(root.T, np.linalg.solve(root, moment / size), maxiter=30 * moment.size)
     return np.asarray(amounts / size, dtype=float)
 
 
