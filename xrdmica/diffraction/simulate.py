@@ -38,6 +38,10 @@ class MountSettings:
         [degree]
     spread_factors : mapping
         Phase id -> factor on the orientation spread of that phase.
+    neutral_share : float
+        Part of the scattering that is calculated with neutral atoms, where the program assumes ions.
+    hump : tuple of float
+        Centre [degree], width [degree] and height [counts] of a broad hump such as glass or organic matter gives.
     """
 
     low: float = 3.0
@@ -49,6 +53,8 @@ class MountSettings:
     displacement: float = 0.0
     orientation_spread: float = 12.0
     spread_factors: Mapping[str, float] = field(default_factory=dict)
+    neutral_share: float = 0.0
+    hump: tuple[float, float, float] = (25.0, 5.0, 0.0)
 
 
 def usual_component(phase: str, treatment: Treatment, state: str | None = None) -> Component | None:
@@ -99,11 +105,17 @@ def simulate_scan(
         if component is None or weight <= 0:
             continue
         spread = settings.orientation_spread * settings.spread_factors.get(phase, 1.0)
-        total += weight * component_column(component, View(grid, angles, mount, spread, settings.displacement))
+        view = View(grid, angles, mount, spread, settings.displacement)
+        column = component_column(component, view)
+        if settings.neutral_share > 0:
+            column = column + settings.neutral_share * (component_column(component, view, "neutral") - column)
+        total += weight * column
     if total.max() > 0:
         total *= settings.peak_counts / total.max()
     x = (angles - angles[0]) / (angles[-1] - angles[0])
     smooth = settings.background_counts * (1 + 0.35 * np.sin(2.6 * x + 0.4) - 0.3 * x)
     rise = settings.background_counts * settings.low_angle_rise * np.exp(-(angles - 3.0) / 1.7)
-    counts = rng.poisson(total + smooth + rise).astype(float)
+    centre, width, height = settings.hump
+    glass = height * np.exp(-((angles - centre) ** 2) / (2 * width**2))
+    counts = rng.poisson(total + smooth + rise + glass).astype(float)
     return Scan.from_arrays(angles, counts, radiation=tube, mount=mount, treatment=treatment)

@@ -1,0 +1,288 @@
+"""The contest between sets of phases: from the coarse choice to one that no exchange of look-alikes would better."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import replace
+from itertools import combinations
+
+from xrdmica.crystals.library import Phase, load_phase
+from xrdmica.diffraction.optics import Instrument
+from xrdmica.identify.align import align
+from xrdmica.identify.candidates import Hopeful, hopefuls
+from xrdmica.identify.evidence import ledger_for
+from xrdmica.identify.search import KEEP, RARE_FACTOR, Arena, Selection, build_arena, refined, select, settle, swapped
+from xrdmica.identify.strangers import with_strangers
+from xrdmica.matching.linear import tied_fit
+from xrdmica.matching.prepare import prepare
+from xrdmica.scans.scan import Sample
+
+__all__ = ["compare", "rivals"]
+
+SWAP = 100.0  # rise of chi-square below which another phase would do as well
+_NEIGHBOUR = 0.45  # angstrom
+_TRIALS = 3
+_GOOD = 1.1  # reduced chi-square below which nothing is left to explain
+# Composition and form factors change calculated heights by some percent, which no count cures: a rival that explains all
+# but this share of what a phase explains is not told from it.
+_SAME = 0.025
+# A look-alike of a kept phase that is needed for less than this share of its twin's lines only mends their heights.
+_MEND, _MEND_RARE = 0.1, 0.25
+_BADLY = 500.0  # rise of chi-square from which a phase without a line of its own stays
+
+
+def compare(sample: Sample, phases: Sequence[Phase], instrument: Instrument) -> tuple[tuple[Hopeful, ...], Arena, Selection]:
+    """Candidates, coarse choice among common phases, refinement, then the choice among all."""
+    prepared = prepare(sample, instrument)
+    considered = hopefuls(phases, prepared)
+    prepared = with_strangers(considered, align(considered, prepared))
+    candidates = settle(considered, prepared)
+    arena = build_arena(candidates, prepared)
+    usual = _without_rare(arena)
+    selection = select(usual, coarse=True)
+    prepared, changed = refined(usual, selection)
+    usual, kept = _better_neighbours(build_arena(changed, prepared), selection.active)
+    placed = {c.phase: c for c in usual.candidates}
+    rest = [placed.get(c.phase, c) for c in candidates]
+    arena = build_arena(rest, usual.prepared)
+    chosen = select(arena)
+    first = {usual.candidates[a].phase for a in kept}
+    if {arena.candidates[a].phase for a in chosen.active} != first:
+        prepared, rest_again = refined(arena, chosen, rounds=5)
+        arena = build_arena(rest_again, prepared)
+        chosen = select(arena)
+    labels = sample.labels
+    chosen = _only_visible(arena, _usual_first(arena, _simplified(arena, chosen), labels), labels)
+    return considered, *_fair_contest(*_completed(arena, chosen, labels), labels)
+
+
+def _without_rare(arena: Arena) -> Arena:
+    """The arena without rare phases: what is usual has the first say in placing the scans."""
+    keep = [i for i, c in enumerate(arena.candidates) if load_phase(c.phase).occurrence == "common"]
+    return _part(arena, keep)
+
+
+def _part(arena: Arena, keep: Sequence[int]) -> Arena:
+    return Arena(
+        arena.prepared,
+        tuple(arena.candidates[i] for i in keep),
+        tuple(a[:, list(keep)] for a in arena.columns),
+        {f: tuple(s.subset(keep) for s in systems) for f, systems in arena.systems.items()},
+    )
+
+
+def _among(arena: Arena, places: Sequence[int]) -> Selection:
+    """The selection from some candidates only, with places of the whole arena."""
+    part = select(_part(arena, places))
+    return replace(
+        part,
+        active=tuple(places[a] for a in part.active),
+        need={places[a]: need for a, need in part.need.items()},
+    )
+
+
+def _held(arena: Arena, active: Sequence[int]) -> Selection:
+    """A fixed set of candidates with its fit, nothing tested."""
+    fit = tied_fit([s.subset(active) for s in arena.systems[1.0]])
+    noise = max(1.0, fit.chi_square / max(arena.points, 1))
+    return Selection(tuple(active), 1.0, fit, {}, noise)
+
+
+def _neighbours(arena: Arena, one: int, two: int) -> bool:
+    """Whether two candidates have their first lines at nearly the same place in some scan."""
+    pairs = zip(arena.candidates[one].components, arena.candidates[two].components, strict=True)
+    return any(
+        a is not None and b is not None and bool(a.spacings and b.spacings) and abs(a.spacings[0] - b.spacings[0]) < _NEIGHBOUR
+        for a, b in pairs
+    )
+
+
+def _twins(arena: Arena, one: int, two: int) -> bool:
+    """Whether two candidates are look-alikes by their files, or stand at the same place and one of them is rare."""
+    first, second = load_phase(arena.candidates[one].phase), load_phase(arena.candidates[two].phase)
+    listed = any(x.id == second.id for x in first.look_alikes) or any(x.id == first.id for x in second.look_alikes)
+    rare = "rare" in (first.occurrence, second.occurrence)
+    return (listed or rare) and _neighbours(arena, one, two)
+
+
+def _better_neighbours(arena: Arena, active: tuple[int, ...]) -> tuple[Arena, tuple[int, ...]]:
+    """Exchange kept phases for neighbours that fit better once refined: the coarse choice may have taken the wrong one.
+
+    Parameters
+    ----------
+    arena : Arena
+        Refined for the kept phases.
+    active : tuple of int
+        Their places.
+
+    Returns
+    -------
+    arena : Arena
+    active : tuple of int
+    """
+    held = _held(arena, active)
+    trials = []
+    for place in active:
+        for other in range(len(arena.candidates)):
+            if other not in active and _neighbours(arena, place, other):
+                swap = tuple(other if a == place else a for a in active)
+                trials.append((_held(arena, swap).fit.chi_square, swap))
+    for _, swap in sorted(trials)[:_TRIALS]:
+        if held.noise < _GOOD:
+            break
+        prepared, candidates = refined(arena, _held(arena, swap), rounds=5)
+        trial = build_arena(candidates, prepared)
+        result = _held(trial, swap)
+        if result.fit.chi_square < held.fit.chi_square:
+            return _better_neighbours(trial, swap)
+    return arena, active
+
+
+def _simplified(arena: Arena, selection: Selection) -> Selection:
+    """Put one phase in place of two neighbours where that costs next to nothing."""
+    others = [i for i in range(len(arena.candidates)) if i not in selection.active]
+    for one, two in combinations(selection.active, 2):
+        if not _neighbours(arena, one, two):
+            continue
+        for place in others:
+            if not _neighbours(arena, one, place):
+                continue
+            active = [a for a in selection.active if a not in (one, two)] + [place]
+            fit = tied_fit([s.subset(active) for s in arena.systems[selection.factor]])
+            if fit.chi_square - selection.fit.chi_square < KEEP * selection.noise:
+                return _simplified(arena, _among(arena, active))
+    return selection
+
+
+def _usual_first(arena: Arena, selection: Selection, labels: Sequence[str]) -> Selection:
+    """Put a common phase in place of a rare one wherever it does nearly as well."""
+    for place in selection.active:
+        if load_phase(arena.candidates[place].phase).occurrence == "common":
+            continue
+        poor = ledger_for(arena, selection, place, labels).clear_lines < 2
+        common, _ = rivals(arena, selection, place, anywhere=poor)
+        costs = {i: swapped(arena, selection, place, i) for i, c in enumerate(arena.candidates) if c.phase in common}
+        if costs:
+            best = min(costs, key=lambda i: costs[i])
+            return _usual_first(arena, _among(arena, [*(a for a in selection.active if a != place), best]), labels)
+    return selection
+
+
+def _completed(arena: Arena, selection: Selection, labels: Sequence[str], tries: int = 2) -> tuple[Arena, Selection]:
+    """Take in what was dropped too early: once the rest is well placed, a phase may be needed after all."""
+    if not selection.active or tries <= 0:
+        return arena, selection
+    gains = {}
+    for place in range(len(arena.candidates)):
+        if place not in selection.active:
+            fit = tied_fit([s.subset([*selection.active, place]) for s in arena.systems[selection.factor]])
+            weight = RARE_FACTOR if load_phase(arena.candidates[place].phase).occurrence == "rare" else 1.0
+            gains[place] = (selection.fit.chi_square - fit.chi_square) / weight
+    best = max(gains, key=lambda a: gains[a], default=None)
+    if best is None or gains[best] < 2 * KEEP * selection.noise:
+        return arena, selection
+    prepared, candidates = refined(arena, _among(arena, [*selection.active, best]), rounds=5)
+    fuller = build_arena(candidates, prepared)
+    chosen = _only_visible(fuller, _simplified(fuller, select(fuller)), labels)
+    if chosen.fit.chi_square < selection.fit.chi_square - KEEP * selection.noise:
+        return _completed(fuller, chosen, labels, tries - 1)
+    return arena, selection
+
+
+def _fair_contest(arena: Arena, selection: Selection, labels: Sequence[str], tries: int = 4) -> tuple[Arena, Selection]:
+    """Refine close rivals too before one is preferred: a kept phase had the fit's attention, its rivals had not.
+
+    Parameters
+    ----------
+    arena, selection
+        As compared so far.
+    labels : sequence of str
+        Scan labels.
+    tries : int
+        Refinements allowed.
+
+    Returns
+    -------
+    Arena, Selection
+        With whatever did better in place.
+    """
+    for place in selection.active:
+        common, _ = rivals(arena, selection, place, anywhere=False)
+        for name in common:
+            if tries <= 0:
+                return arena, selection
+            tries -= 1
+            rival = next(i for i, c in enumerate(arena.candidates) if c.phase == name)
+            trial = _among(arena, [*(a for a in selection.active if a != place), rival])
+            if rival not in trial.active:
+                continue
+            prepared, candidates = refined(arena, trial, rounds=5)
+            better = build_arena(candidates, prepared)
+            chosen = select(better)
+            if chosen.fit.chi_square < selection.fit.chi_square - 1.0 and len(chosen.active) <= len(selection.active):
+                return _fair_contest(better, _only_visible(better, chosen, labels), labels, tries)
+    return arena, selection
+
+
+def _only_visible(arena: Arena, selection: Selection, labels: Sequence[str]) -> Selection:
+    """Drop what only fills in under the lines of other phases: it cannot be claimed, and the rest must do without it."""
+    powder = all(item.scan.mount == "random" for item in arena.prepared)
+    mending = _mending(arena, selection)
+    if mending:
+        return _only_visible(arena, _among(arena, [a for a in selection.active if a not in mending]), labels)
+    hidden = [a for a in selection.active if _unclaimable(arena, selection, a, labels, powder)]
+    if not hidden:
+        return selection
+    weakest = min(hidden, key=lambda a: float(selection.need[a].sum()))
+    return _only_visible(arena, _among(arena, [a for a in selection.active if a != weakest]), labels)
+
+
+def _mending(arena: Arena, selection: Selection) -> set[int]:
+    """Kept candidates that stand at the place of a look-alike and only mend its calculated heights."""
+    out = set()
+    for one, two in combinations(selection.active, 2):
+        weak, strong = sorted((one, two), key=lambda a: float(selection.need[a].sum()))
+        if strong in out or weak in out or not _twins(arena, weak, strong):
+            continue
+        rare = load_phase(arena.candidates[weak].phase).occurrence == "rare"
+        if float(selection.need[weak].sum()) < (_MEND_RARE if rare else _MEND) * float(selection.need[strong].sum()):
+            out.add(weak)
+    return out
+
+
+def _unclaimable(arena: Arena, selection: Selection, place: int, labels: Sequence[str], powder: bool) -> bool:
+    """Whether a kept candidate has nothing to show: no line of its own, more missing than found, no first line in a powder.
+
+    One that is needed badly stays all the same: two phases may share every line and still both be there.
+    """
+    ledger = ledger_for(arena, selection, place, labels)
+    if ledger.clear_lines == 0:
+        rare = load_phase(arena.candidates[place].phase).occurrence == "rare"
+        return powder or rare or float(selection.need[place].sum()) < _BADLY * selection.noise
+    if not load_phase(arena.candidates[place].phase).is_sheet_silicate:
+        return False
+    return ledger.missing_lines >= ledger.clear_lines or (powder and not ledger.first_line)
+
+
+def rivals(
+    arena: Arena, selection: Selection, place: int, *, anywhere: bool = False
+) -> tuple[tuple[str, ...], tuple[str, ...]]:
+    """Phases that would do nearly as well as a kept one: (common, rare); look-alikes and neighbours, or `anywhere`."""
+    common: list[str] = []
+    rare: list[str] = []
+    look_alikes = {x.id for x in load_phase(arena.candidates[place].phase).look_alikes}
+    for other in range(len(arena.candidates)):
+        if other in selection.active:
+            continue
+        name = arena.candidates[other].phase
+        if not anywhere and name not in look_alikes and not _neighbours(arena, place, other):
+            continue
+        # a rival must also do most of what the kept one does, or everything would be one on a poor fit
+        need = float(selection.need[place].sum())
+        limit = max(min(SWAP * selection.noise, 0.5 * need), _SAME * need)
+        if anywhere and _neighbours(arena, place, other):
+            # with so little of its own to show, whatever explains a fair part of the same line will do as well
+            limit = 0.7 * need
+        if swapped(arena, selection, place, other, hopeless=10 * limit) < limit:
+            (common if load_phase(name).occurrence == "common" else rare).append(name)
+    return tuple(common), tuple(rare)
