@@ -1,6 +1,6 @@
 """Make the demonstration scans: an invented dam foundation and an invented talc quarry.
 
-Run ``python demo_patterns/make_demo_patterns.py`` from the repository; the same seed gives the same files byte for byte.
+Run ``python demo_patterns/make_demo_patterns.py`` from the repository; the same seed and version give the same files.
 The scans are calculated with the program's own models, but with optics, orientation, stack heights, compositions and
 background drawn away from the values that the program starts from, with specimen displacement and counting noise.
 """
@@ -49,18 +49,35 @@ class Specimen:
 
 
 SPECIMENS = (
-    Specimen("GB1-04.2", "4.2", "grey plastic clay seam, dam foundation", {"illite": 30, "smectite": 42, "kaolinite": 20, "quartz": 8}, "yes"),
-    Specimen("GB1-11.8", "11.8", "stiff clay, dam foundation", {"illite_smectite": 55, "illite": 25, "kaolinite": 20}, "yes",
-             fractions={"illite_smectite": 0.45}, style="comma"),
-    Specimen("GB2-06.5", "6.5", "weathered phyllite, dam foundation", {"muscovite": 46, "chlorite": 34, "kaolinite": 20}, "no",
-             style="decimal_comma"),
-    Specimen("GB3-02.0", "2.0", "clay film on a joint; too little material for glycol", {"smectite": 35, "illite": 65}, "cannot tell",
-             treatments=("air_dried",)),
-    Specimen("GB4-09.1", "9.1", "schist, scanned with a cobalt tube", {"biotite": 40, "vermiculite": 25, "chlorite": 35}, "no", radiation="Co",
-             high=41.0, style="header", exchanges={"biotite": {"fe": 1.3}}),
+    Specimen(
+        "GB1-04.2", "4.2", "grey plastic clay seam, dam foundation",
+        {"illite": 30, "smectite": 42, "kaolinite": 20, "quartz": 8}, "yes",
+    ),
+    Specimen(
+        "GB1-11.8", "11.8", "stiff clay, dam foundation", {"illite_smectite": 55, "illite": 25, "kaolinite": 20}, "yes",
+        fractions={"illite_smectite": 0.45}, style="comma",
+    ),
+    Specimen(
+        "GB2-06.5", "6.5", "weathered phyllite, dam foundation", {"muscovite": 46, "chlorite": 34, "kaolinite": 20}, "no",
+        style="decimal_comma",
+    ),
+    Specimen(
+        "GB3-02.0", "2.0", "clay film on a joint; too little material for glycol", {"smectite": 35, "illite": 65},
+        "cannot tell", treatments=("air_dried",),
+    ),
+    Specimen(
+        "GB4-09.1", "9.1", "schist, scanned with a cobalt tube", {"biotite": 40, "vermiculite": 25, "chlorite": 35}, "no",
+        radiation="Co", high=41.0, style="header", exchanges={"biotite": {"fe": 1.3}},
+    ),
     Specimen("TQ-A", "0.5", "talc ore, quarry face", {"talc": 78, "chlorite": 22}, "no", style="three_columns"),
-    Specimen("TQ-B", "1.5", "contact zone: true mica, brittle mica and talc", {"muscovite": 34, "margarite": 40, "talc": 26}, "no", high=52.0),
-    Specimen("TQ-C", "3.0", "pale schist beside the ore", {"pyrophyllite": 48, "muscovite": 30, "kaolinite": 22}, "no", style="comma"),
+    Specimen(
+        "TQ-B", "1.5", "contact zone: true mica, brittle mica and talc", {"muscovite": 34, "margarite": 40, "talc": 26}, "no",
+        high=52.0,
+    ),
+    Specimen(
+        "TQ-C", "3.0", "pale schist beside the ore", {"pyrophyllite": 48, "muscovite": 30, "kaolinite": 22}, "no",
+        style="comma",
+    ),
 )  # fmt: skip
 
 
@@ -118,7 +135,8 @@ def written(specimen: Specimen, treatment: str, scan: Scan) -> tuple[str, str]:
         lines = "".join(f"{x:.2f};{y:.0f}\n" for x, y in pairs).replace(".", ",")
         return f"{stem}.txt", "Winkel;Impulse\n" + lines
     if specimen.style == "three_columns":
-        return f"{stem}.xye", "".join(f"{x:.2f} {y:.0f} {s:.2f}\n" for x, y, s in zip(scan.two_theta, scan.counts, scan.sigma, strict=True))
+        rows = zip(scan.two_theta, scan.counts, scan.sigma, strict=True)
+        return f"{stem}.xye", "".join(f"{x:.2f} {y:.0f} {s:.2f}\n" for x, y, s in rows)
     if specimen.style == "header":
         head = f"# sample: {specimen.name}\n# anode: {specimen.radiation}\n# treatment: {treatment}\n# step: 0.02\n"
         return f"{stem}.dat", head + "".join(f"{x:.2f}\t{y:.0f}\n" for x, y in pairs)

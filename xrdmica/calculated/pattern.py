@@ -12,8 +12,8 @@ from xrdmica.chemistry.formula import SiteFormula
 from xrdmica.crystals.layer import Layer
 from xrdmica.crystals.library import Phase
 from xrdmica.diffraction.basal import PatternGrid, basal_intensity, layer_amplitude, make_grid, on_scan
-from xrdmica.diffraction.columns import View, component_column, expected_lines
-from xrdmica.diffraction.optics import RANDOM_SPREAD, Instrument, mount_factor, polarisation
+from xrdmica.diffraction.columns import View, component_column
+from xrdmica.diffraction.optics import RANDOM_SPREAD, Instrument, lorentz_factor, mount_factor, polarisation
 from xrdmica.diffraction.powder import Reflections, powder_profile
 from xrdmica.diffraction.scattering import FormFactors
 from xrdmica.errors import XrdmicaError
@@ -25,6 +25,7 @@ __all__ = ["CalculatedPattern", "Reflection", "basal_areas", "calculate_pattern"
 
 Array = NDArray[np.float64]
 _MOST_POINTS = 200_000
+_LEAST_PROMINENCE = 0.001  # of composite lines, relative to the highest point
 
 
 @dataclass(frozen=True)
@@ -116,8 +117,6 @@ def basal_areas(layer: Layer, orders: NDArray[np.int64], grid: PatternGrid, spre
         squared = (squared + np.abs(layer_amplitude(layer, -s, tube, model)) ** 2) / 2
     sine = s * tube.wavelength
     angle = 2 * np.degrees(np.arcsin(sine))
-    from xrdmica.diffraction.optics import lorentz_factor
-
     factor = lorentz_factor(angle, spread, instrument) * mount_factor(angle, instrument)
     jacobian = np.degrees(tube.wavelength / (layer.spacing * np.sqrt(1 - sine**2)))
     return np.asarray(squared * factor * jacobian / (layer.molar_mass * layer.area))
@@ -185,7 +184,7 @@ def calculate_pattern(
     if mean_layers is not None and mean_layers < 1.5:
         raise XrdmicaError(f"a mean of {mean_layers:g} layers per stack is too few", fix="give 1.5 or more")
     if not 0.5 <= orientation_spread <= 60:
-        raise XrdmicaError(f"an orientation spread of {orientation_spread:g} degrees is no mount", fix="give 0.5 to 60, usual is 12")
+        raise XrdmicaError(f"a spread of {orientation_spread:g} degrees is out of range", fix="give 0.5 to 60, usual is 12")
     grid = make_grid(angles, tube, instrument or Instrument())
     low_d = tube.wavelength / (2 * np.sin(np.radians(angles[-1]) / 2))
     chosen = subject_of(subject, state, mount, tube, float(low_d), polytype, model)
@@ -197,7 +196,7 @@ def calculate_pattern(
         )
     view = View(grid, angles, mount, orientation_spread)
     curve = _curve(chosen, view, model)
-    reflections = _reflections(chosen, view, model)
+    reflections = _reflections(chosen, view, curve, model)
     top = float(curve.max())
     if top <= 0 or not reflections:
         raise XrdmicaError(
@@ -214,7 +213,7 @@ def _angles(limits: tuple[float, float], step: float) -> Array:
         raise XrdmicaError(f"a step of {step:g} degrees does not suit the range", fix="give 0.01 or 0.02")
     if (high - low) / step > _MOST_POINTS:
         raise XrdmicaError("range and step make too many points", fix="give a larger step")
-    return low + step * np.arange(round((high - low) / step) + 1)
+    return np.asarray(low + step * np.arange(round((high - low) / step) + 1), dtype=float)
 
 
 def _curve(chosen: Subject, view: View, model: FormFactors) -> Array:
@@ -233,12 +232,16 @@ def _curve(chosen: Subject, view: View, model: FormFactors) -> Array:
     return total
 
 
-def _reflections(chosen: Subject, view: View, model: FormFactors) -> tuple[Reflection, ...]:
+def _reflections(chosen: Subject, view: View, curve: Array, model: FormFactors) -> tuple[Reflection, ...]:
     low, high = float(view.two_theta[0]), float(view.two_theta[-1])
     tube, instrument = view.grid.radiation, view.grid.instrument
     rows: list[tuple[tuple[int, int, int] | None, float, float, int]] = []
     if chosen.component is not None and chosen.layer is None and chosen.lines is None:
-        rows = [(None, line.d_spacing, line.share, 1) for line in expected_lines(chosen.component, view, 0.0)]
+        from scipy.signal import find_peaks
+
+        # composite lines have no indices: they are read off the curve
+        places, _ = find_peaks(curve, prominence=_LEAST_PROMINENCE * float(curve.max()))
+        rows = [(None, float(tube.d_spacing(view.two_theta[i])), float(curve[i]), 1) for i in places]
     if chosen.layer is not None:
         orders = np.arange(1, int(2 * chosen.layer.spacing / tube.wavelength * 0.999) + 1)
         areas = basal_areas(chosen.layer, orders, view.grid, view.spread, model)
@@ -251,8 +254,8 @@ def _reflections(chosen: Subject, view: View, model: FormFactors) -> tuple[Refle
     if chosen.lines is not None:
         areas = powder_areas(chosen.lines, tube, instrument)
         rows += [
-            ((int(h), int(k), int(l)), float(d), float(area), int(many))
-            for (h, k, l), d, area, many in zip(
+            ((int(hkl[0]), int(hkl[1]), int(hkl[2])), float(d), float(area), int(many))
+            for hkl, d, area, many in zip(
                 chosen.lines.hkl, chosen.lines.d_spacing, areas, chosen.lines.multiplicity, strict=True
             )
         ]

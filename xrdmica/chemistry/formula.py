@@ -154,6 +154,12 @@ class SiteFormula:
 
         return oxide_percent(self)
 
+    def rounded(self, digits: int = 3) -> SiteFormula:
+        """The formula with amounts rounded, and without those that become 0; for showing only."""
+        sites = ({ion: round(n, digits) for ion, n in self.site(site).items() if round(n, digits)} for site in SITES)
+        inner, octahedral, tetrahedral, anions = sites
+        return SiteFormula(self.layer_type, inner, octahedral, tetrahedral, anions, round(self.water, digits), self.notes)
+
     def element_counts(self, with_water: bool = False) -> dict[str, float]:
         """Atoms of every element per formula unit; interlayer molecules only `with_water`."""
         counts: dict[str, float] = {}

@@ -3,26 +3,38 @@
 from __future__ import annotations
 
 from pathlib import Path
-from typing import TYPE_CHECKING, Any
+from typing import TYPE_CHECKING, Any, Literal
 
 import click
+
+from xrdmica.cli.oxide_analyses import analyses_csv, analysis_record, parse_interlayer_magnesium, read_all, show_analysis
 
 if TYPE_CHECKING:
     from rich.console import Console
 
+    from xrdmica.chemistry.analysis import Basis, Iron
     from xrdmica.chemistry.formula import SiteFormula
 
 __all__ = ["command"]
 
-_COLUMNS = ("formula", "text", "layer_type", "group", "octahedral_character", "layer_charge", "imbalance", "molar_mass", "water")
+_COLUMNS = (
+    "formula", "text", "name", "layer_type", "group", "octahedral_character", "layer_charge", "imbalance", "molar_mass", "water",
+)  # fmt: skip
 
 
 def _record(given: str, formula: SiteFormula) -> dict[str, Any]:
     from xrdmica.chemistry.formula import SITES
+    from xrdmica.chemistry.naming import classify
 
+    named = classify(formula)
     return {
         "formula": given,
         "text": formula.text(),
+        "name": named.name,
+        "species": named.species,
+        "series": named.series,
+        "end_members": {name: _plain(share) for name, share in named.shares},
+        "reasons": list(named.reasons),
         "layer_type": formula.layer_type,
         "group": formula.group,
         "octahedral_character": formula.octahedral_character,
@@ -46,7 +58,9 @@ def _show(console: Console, formula: SiteFormula) -> None:
     from rich.table import Table
 
     from xrdmica.chemistry.formula import SITES
+    from xrdmica.chemistry.naming import classify
 
+    named = classify(formula)
     console.print(f"[bold]{escape(formula.text())}[/bold]", highlight=False)
     sites = Table("site", "ions per formula unit", title="Sites", title_justify="left")
     for heading in ("sum", "charge"):
@@ -56,6 +70,7 @@ def _show(console: Console, formula: SiteFormula) -> None:
         sites.add_row(site, ions, f"{formula.site_sum(site):.3f}", f"{_plain(formula.site_charge(site)):+.3f}")
     console.print(sites)
     facts = Table(show_header=False, title="What follows", title_justify="left")
+    facts.add_row("name", escape(named.name))
     facts.add_row("group", formula.group)
     facts.add_row("octahedral sheet", formula.octahedral_character)
     facts.add_row("layer", formula.layer_type)
@@ -73,6 +88,8 @@ def _show(console: Console, formula: SiteFormula) -> None:
     oxides.add_section()
     oxides.add_row("sum", f"{sum(percent.values()):.2f}")
     console.print(oxides)
+    for reason in named.reasons:
+        console.print(f"because: {escape(reason)}", highlight=False)
     for note in formula.notes:
         console.print(f"note: {escape(note)}", highlight=False)
 
@@ -98,15 +115,40 @@ _FILE = click.Path(dir_okay=False, path_type=Path)
 
 
 @click.command(name="formula")
-@click.argument("formulas", metavar="FORMULA...", nargs=-1, required=True)
+@click.argument("formulas", metavar="[FORMULA]...", nargs=-1)
+@click.option("--oxides", "oxide_file", metavar="FILE", type=_FILE, help="Table of analyses in weight percent of oxides.")
+@click.option(
+    "--layer", "layer_type", type=click.Choice(["auto", "2:1", "1:1", "2:1:1"]), default="auto", show_default=True,
+    help="Layer that the analyses are normalised to (2:1:1 is chlorite).",
+)
+@click.option(
+    "--iron", type=click.Choice(["auto", "given", "ferrous", "ferric"]), default="auto", show_default=True,
+    help="Oxidation of iron; auto brackets it unless FeO and Fe2O3 are both given.",
+)
+@click.option("--tetrahedral-iron", is_flag=True, help="Fill a short tetrahedral site with Fe3+.")
+@click.option(
+    "--interlayer-magnesium", metavar="ATOMS|excess", callback=parse_interlayer_magnesium,
+    help="Mg to put between the layers, or all above a full octahedral sheet.",
+)
 @click.option("--json", "json_file", metavar="FILE", type=_FILE, help="Write all numbers as JSON.")
 @click.option("--csv", "csv_file", metavar="FILE", type=_FILE, help="Write one row per formula.")
-def command(formulas: tuple[str, ...], json_file: Path | None, csv_file: Path | None) -> None:
-    """Read structural formulas: sites, layer charge, group, molar mass and oxides.
+@click.pass_context
+def command(
+    ctx: click.Context,
+    formulas: tuple[str, ...],
+    oxide_file: Path | None,
+    layer_type: Basis,
+    iron: Iron,
+    tetrahedral_iron: bool,
+    interlayer_magnesium: float | Literal["excess"],
+    json_file: Path | None,
+    csv_file: Path | None,
+) -> None:
+    """Read structural formulas or oxide analyses: sites, layer charge, name with reasons, molar mass and oxides.
 
     Quote each FORMULA, such as "K(Mg2.2Fe2+0.8)(AlSi3)O10(OH)2", or name the sites:
     "I: K0.9 | M: Al2 | T: Si3.1 Al0.9 | A: O10 (OH)2".
-    """
+    """  # fmt: skip
     import json
 
     from rich.console import Console
@@ -115,19 +157,37 @@ def command(formulas: tuple[str, ...], json_file: Path | None, csv_file: Path | 
     from xrdmica.errors import ChemistryError
     from xrdmica.report.files import write_text
 
-    read: list[SiteFormula] = []
-    for text in formulas:
-        try:
-            read.append(SiteFormula.parse(text))
-        except ChemistryError as error:
-            raise ChemistryError(f"formula {text!r}: {error.what}", why=error.why, fix=error.fix) from error
+    if bool(formulas) == (oxide_file is not None):
+        raise click.UsageError("give formulas, or a table with --oxides FILE")
     console = Console()
-    for formula in read:
-        _show(console, formula)
-    records = [_record(text, formula) for text, formula in zip(formulas, read, strict=True)]
+    if oxide_file is not None:
+        found, failed = read_all(
+            oxide_file, layer_type=layer_type, iron=iron, tetrahedral_iron=tetrahedral_iron,
+            interlayer_magnesium=interlayer_magnesium,
+        )  # fmt: skip
+        for one in found:
+            show_analysis(console, one)
+        records = [analysis_record(one) for one in found]
+        table = analyses_csv(records)
+    else:
+        read: list[SiteFormula] = []
+        failed = []
+        for text in formulas:
+            try:
+                read.append(SiteFormula.parse(text))
+            except ChemistryError as error:
+                raise ChemistryError(f"formula {text!r}: {error.what}", why=error.why, fix=error.fix) from error
+        for formula in read:
+            _show(console, formula)
+        records = [_record(text, formula) for text, formula in zip(formulas, read, strict=True)]
+        table = _csv_text(records)
+    for sentence in failed:
+        click.echo(f"xrdmica: {sentence}", err=True)
     if json_file is not None:
         write_text(json_file, json.dumps({"formulas": records}, indent=2, ensure_ascii=False) + "\n")
         click.echo(f"wrote {json_file}", err=True)
     if csv_file is not None:
-        write_text(csv_file, _csv_text(records))
+        write_text(csv_file, table)
         click.echo(f"wrote {csv_file}", err=True)
+    if failed:
+        ctx.exit(1)

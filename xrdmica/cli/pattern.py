@@ -10,7 +10,7 @@ from typing import TYPE_CHECKING
 
 import click
 
-from xrdmica.cli.options import csv_option, file_option, json_option, radiation_option
+from xrdmica.cli.options import csv_option, file_option, json_option
 
 if TYPE_CHECKING:
     from xrdmica.calculated.pattern import CalculatedPattern
@@ -21,8 +21,8 @@ __all__ = ["command"]
 @click.command(name="pattern")
 @click.argument("subject", metavar="PHASE|FORMULA")
 @click.option("--mount", type=click.Choice(["oriented", "random"]), default="oriented", show_default=True, help="Kind of mount.")
-@radiation_option
-@click.option("--treatment", metavar="TREATMENT", default="air_dried", show_default=True, help="Such as glycolated or heated_550.")
+@click.option("--radiation", metavar="TUBE", default="Cu", show_default=True, help="Cu, Co, Fe, Cr, Mo or a wavelength in Å.")
+@click.option("--treatment", metavar="NAME", default="air_dried", show_default=True, help="Such as glycolated or heated_550.")
 @click.option(
     "--range", "limits", type=float, nargs=2, default=(2.0, 70.0), show_default=True, metavar="LOW HIGH",
     help="Angles in degrees two-theta.",
@@ -43,7 +43,7 @@ __all__ = ["command"]
 def command(
     subject: str,
     mount: str,
-    radiation: str | None,
+    radiation: str,
     treatment: str,
     limits: tuple[float, float],
     step: float,
@@ -68,7 +68,7 @@ def command(
         subject,
         mount="random" if mount == "random" else "oriented",
         treatment=treatment,
-        radiation=radiation or "Cu",
+        radiation=radiation,
         two_theta_range=limits,
         step=step,
         mean_layers=mean_layers,

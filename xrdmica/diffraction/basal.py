@@ -9,9 +9,17 @@ import numpy as np
 from numpy.typing import NDArray
 
 from xrdmica.crystals.layer import Layer
-from xrdmica.diffraction.optics import Instrument, displacement_shift, lorentz_factor, mount_factor, wavelength_ratios
+from xrdmica.diffraction.optics import (
+    Instrument,
+    axial_nodes,
+    displacement_shift,
+    lorentz_factor,
+    mount_factor,
+    wavelength_ratios,
+)
 from xrdmica.diffraction.peak_shape import convolve_profile
 from xrdmica.diffraction.scattering import FormFactors, anomalous, form_factor
+from xrdmica.diffraction.specimen import film_factor, transparency_shift
 from xrdmica.radiation import Radiation
 
 __all__ = [
@@ -265,12 +273,12 @@ def _factor(grid: PatternGrid, orientation_spread: float) -> NDArray[np.float64]
 
 @dataclass(frozen=True, eq=False)
 class Sampling:
-    """Where the points of a scan lie on a grid, for each line of the tube.
+    """Where the points of a scan lie on a grid, for each line of the tube (and each axial angle).
 
     Attributes
     ----------
     weights : tuple of float
-        Share of each line.
+        Share of each.
     index : tuple of ndarray of int, each (n,)
         Grid point below.
     part : tuple of ndarray, each (n,)
@@ -290,7 +298,11 @@ class Sampling:
 
 
 def sample_points(
-    grid: PatternGrid, two_theta: NDArray[np.float64], displacement: float = 0.0, zero_shift: float = 0.0
+    grid: PatternGrid,
+    two_theta: NDArray[np.float64],
+    displacement: float = 0.0,
+    zero_shift: float = 0.0,
+    linear_attenuation: float | None = None,
 ) -> Sampling:
     """Place the points of a scan on a grid.
 
@@ -303,17 +315,23 @@ def sample_points(
         [mm]
     zero_shift : float
         Added to every calculated angle [degree].
+    linear_attenuation : float, optional
+        Of a thick packed specimen, for its transparency shift [1/mm]; left out when None.
     """
     true_angle = two_theta - displacement_shift(two_theta, displacement, grid.instrument) - zero_shift
-    sine = np.sin(np.radians(true_angle) / 2)
+    if linear_attenuation is not None:
+        true_angle = true_angle - transparency_shift(two_theta, linear_attenuation, grid.instrument.goniometer_radius)
     weights, indices, parts = [], [], []
-    for ratio, weight in wavelength_ratios(grid.radiation):
-        position = (2 * np.degrees(np.arcsin(np.clip(sine / ratio, -1, 1))) - grid.two_theta[0]) / grid.step
-        position = np.clip(position, 0, grid.two_theta.size - 1.000001)
-        index = position.astype(np.int64)
-        weights.append(weight)
-        indices.append(index)
-        parts.append(position - index)
+    for cosine, share in axial_nodes(grid.instrument):
+        angle = true_angle if cosine == 1 else np.degrees(np.arccos(np.cos(np.radians(true_angle)) * cosine))
+        sine = np.sin(np.radians(angle) / 2)
+        for ratio, weight in wavelength_ratios(grid.radiation, grid.instrument):
+            position = (2 * np.degrees(np.arcsin(np.clip(sine / ratio, -1, 1))) - grid.two_theta[0]) / grid.step
+            position = np.clip(position, 0, grid.two_theta.size - 1.000001)
+            index = position.astype(np.int64)
+            weights.append(share * weight)
+            indices.append(index)
+            parts.append(position - index)
     return Sampling(tuple(weights), tuple(indices), tuple(parts))
 
 
@@ -327,7 +345,9 @@ def make_grid(two_theta: NDArray[np.float64], radiation: Radiation, instrument: 
     """
     step = min(_GRID_STEP, float(np.median(np.diff(two_theta)))) if two_theta.size > 1 else _GRID_STEP
     low = max(float(two_theta.min()) - _MARGIN, 0.3)
-    high = min(float(two_theta.max()) + _MARGIN, 175.0)
+    shortest = min(ratio for ratio, _ in wavelength_ratios(radiation, instrument))
+    highest = float(np.degrees(2 * np.arcsin(min(np.sin(np.radians(two_theta.max()) / 2) / shortest, 1.0))))
+    high = min(highest + _MARGIN, 175.0)
     return _grid(round(low, 2), round(high, 2), max(round(step, 3), 0.005), radiation, instrument)
 
 
@@ -384,6 +404,9 @@ def on_scan(
     displacement: float = 0.0,
     zero_shift: float = 0.0,
     sampling: Sampling | None = None,
+    mass_attenuation: float | None = None,
+    mass_mg_cm2: float | None = None,
+    linear_attenuation: float | None = None,
 ) -> NDArray[np.float64]:
     """What the instrument makes of a scattering curve: Lorentz factor, doublet, profile, displacement.
 
@@ -404,6 +427,10 @@ def on_scan(
         Added to every calculated angle [degree].
     sampling : Sampling, optional
         From `sample_points` with the same angles and shifts, when many curves are read.
+    mass_attenuation, mass_mg_cm2 : float, optional
+        Of a film that does not stop the beam [cm^2/g, mg/cm^2]; thick without both.
+    linear_attenuation : float, optional
+        For the transparency shift [1/mm]; no shift when left out.
 
     Returns
     -------
@@ -411,8 +438,10 @@ def on_scan(
     """
     instrument = grid.instrument
     curve = intensity * grid.factor(orientation_spread)
+    if mass_attenuation is not None and mass_mg_cm2 is not None:
+        curve = curve * film_factor(grid.two_theta, mass_attenuation, mass_mg_cm2)
     smeared = convolve_profile(curve, grid.step, instrument.fwhm if fwhm is None else fwhm, instrument.lorentzian)
-    return (sampling or sample_points(grid, two_theta, displacement, zero_shift)).read(smeared)
+    return (sampling or sample_points(grid, two_theta, displacement, zero_shift, linear_attenuation)).read(smeared)
 
 
 def basal_pattern(

@@ -77,6 +77,8 @@ class View:
         [mm]
     fwhm : float or None
         Instrument width [degree] in place of the instrument's own.
+    mass_attenuation, mass_mg_cm2 : float or None
+        Of a film that does not stop the beam [cm^2/g, mg/cm^2]; thick without both.
     """
 
     grid: PatternGrid
@@ -85,6 +87,8 @@ class View:
     orientation_spread: float = 12.0
     displacement: float = 0.0
     fwhm: float | None = None
+    mass_attenuation: float | None = None
+    mass_mg_cm2: float | None = None
 
     @property
     def spread(self) -> float:
@@ -106,6 +110,8 @@ class View:
             fwhm=self.width,
             displacement=self.displacement,
             sampling=self._sampling,
+            mass_attenuation=self.mass_attenuation,
+            mass_mg_cm2=self.mass_mg_cm2,
         )
 
     @cached_property
@@ -292,6 +298,8 @@ def _crossed(component: Component, view: View, model: FormFactors) -> NDArray[np
         size=600.0 if not component.states else component.mean_layers * component.spacings[0],
         displacement=view.displacement,
         fwhm=view.width,
+        mass_attenuation=view.mass_attenuation,
+        mass_mg_cm2=view.mass_mg_cm2,
     )
 
 

@@ -3,25 +3,33 @@
 from __future__ import annotations
 
 import tomllib
+from functools import lru_cache
 from pathlib import Path
 
 import numpy as np
 from numpy.typing import NDArray
 from pydantic import BaseModel, ConfigDict, Field, ValidationError
 
+from xrdmica.diffraction.specimen import film_factor
 from xrdmica.errors import XrdmicaError
 from xrdmica.radiation import Radiation
 
 __all__ = [
+    "K_BETA",
     "RANDOM_SPREAD",
     "Instrument",
+    "axial_nodes",
     "displacement_shift",
     "load_instrument",
     "lorentz_factor",
     "mount_factor",
     "polarisation",
     "powder_ring_factor",
+    "tube_lines",
 ]  # fmt: skip
+
+# K-beta1,3 [angstrom]: International Tables C (1992), table 4.2.2.1 (from memory)
+K_BETA: dict[str, float] = {"Cu": 1.3922, "Co": 1.6208, "Fe": 1.7566, "Cr": 2.0849, "Mo": 0.6323}
 
 # With the tilt spread in radian, psi for an oriented mount tends to 1/(4 sigma^2 sin theta); the density of normals of
 # a random powder over the half-sphere is reached at sigma = 1 radian.
@@ -47,6 +55,29 @@ class Instrument(BaseModel):
         Width of the instrument's own profile at low angles [degree].
     lorentzian : float
         Lorentzian share of that profile, 0 to 1.
+    k_beta : float
+        Area of the K-beta line that filter or monochromator let through, relative to K-alpha; 0 for none. A nickel filter
+        leaves about 0.01 with copper (common practice). Only for tubes named by their metal.
+    axial_asymmetry : bool
+        Whether lines at low angles get the tail towards lower angles that the axial openings cause.
+
+    Notes
+    -----
+    An instrument file has any of these keys; what is left out keeps its default. For example::
+
+        # theta-theta set-up of the clay laboratory
+        name = "basement, copper, nickel filter"
+        goniometer_radius = 240.0       # mm
+        soller_incident = 2.3           # degree, full opening
+        soller_diffracted = 2.3         # degree, full opening
+        divergence = 0.25               # degree
+        automatic_slit = false
+        specimen_length = 20.0          # mm, along the beam
+        monochromator_two_theta = 0.0   # degree; 26.6 for graphite with copper
+        fwhm = 0.08                     # degree
+        lorentzian = 0.5
+        k_beta = 0.005
+        axial_asymmetry = true
     """
 
     model_config = ConfigDict(frozen=True, extra="forbid")
@@ -61,6 +92,8 @@ class Instrument(BaseModel):
     monochromator_two_theta: float = Field(default=0.0, ge=0, lt=90)
     fwhm: float = Field(default=0.10, gt=0.005, lt=2)
     lorentzian: float = Field(default=0.5, ge=0, le=1)
+    k_beta: float = Field(default=0.0, ge=0, le=0.5)
+    axial_asymmetry: bool = False
 
 
 def load_instrument(path: str | Path) -> Instrument:
@@ -164,7 +197,7 @@ def mount_factor(
         lit = instrument.goniometer_radius * np.radians(instrument.divergence)
         factor = np.minimum(1.0, instrument.specimen_length * sine / lit)
     if mass_attenuation is not None and mass_mg_cm2 is not None:
-        factor = factor * -np.expm1(-2e-3 * mass_attenuation * mass_mg_cm2 / sine)
+        factor = factor * film_factor(two_theta, mass_attenuation, mass_mg_cm2)
     return np.asarray(factor)
 
 
@@ -185,6 +218,46 @@ def displacement_shift(two_theta: NDArray[np.float64], displacement: float, inst
     return np.asarray(np.degrees(-2.0 * displacement * cosine / instrument.goniometer_radius))
 
 
-def wavelength_ratios(radiation: Radiation) -> tuple[tuple[float, float], ...]:
-    """(wavelength relative to the strongest line, weight) for every line of the tube."""
-    return tuple((w / radiation.wavelength, share) for w, share in zip(radiation.wavelengths, radiation.weights, strict=True))
+def tube_lines(radiation: Radiation, instrument: Instrument | None = None) -> tuple[tuple[float, float], ...]:
+    """(wavelength [angstrom], weight) of every line that reaches the detector; K-alpha weights sum to 1."""
+    lines = tuple(zip(radiation.wavelengths, radiation.weights, strict=True))
+    if instrument is None or instrument.k_beta <= 0 or radiation.name not in K_BETA:
+        return lines
+    return (*lines, (K_BETA[radiation.name], instrument.k_beta))
+
+
+def wavelength_ratios(radiation: Radiation, instrument: Instrument | None = None) -> tuple[tuple[float, float], ...]:
+    """(wavelength relative to the strongest line, weight) for every line that reaches the detector."""
+    return tuple((wavelength / radiation.wavelength, share) for wavelength, share in tube_lines(radiation, instrument))
+
+
+@lru_cache(maxsize=32)
+def axial_nodes(instrument: Instrument) -> tuple[tuple[float, float], ...]:
+    """Cosines of the axial angle between incident and diffracted ray, with weights that sum to 1.
+
+    A line at 2 theta is seen at phi with cos(phi) cos(angle) = cos(2 theta): below 90 degrees always at lower angles.
+
+    Parameters
+    ----------
+    instrument : Instrument
+        Either Soller slit passes a triangle of angles; the difference of two is close to normal, with the sum of their
+        variances S^2/24, and is sampled at the nodes of Gauss-Hermite quadrature.
+
+    Returns
+    -------
+    tuple of (float, float)
+        ``((1.0, 1.0),)`` where the instrument leaves the asymmetry out.
+
+    References
+    ----------
+    van Laar & Yelon (1984) J. Appl. Cryst. 17, 47-54, for the geometry; here without the finite length of the detector slit.
+    """
+    if not instrument.axial_asymmetry:
+        return ((1.0, 1.0),)
+    sigma = np.radians(np.sqrt((instrument.soller_incident**2 + instrument.soller_diffracted**2) / 24))
+    places, weights = np.polynomial.hermite_e.hermegauss(10)
+    half = places > 0
+    return tuple(
+        (float(np.cos(sigma * place)), float(weight))
+        for place, weight in zip(places[half], weights[half] / weights[half].sum(), strict=True)
+    )

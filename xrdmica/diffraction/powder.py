@@ -12,7 +12,7 @@ from numpy.typing import NDArray
 
 from xrdmica.crystals.library import Phase, load_phase
 from xrdmica.crystals.polytype import cell_atoms, library_structure, structured_polytype
-from xrdmica.diffraction.optics import Instrument, displacement_shift, mount_factor, polarisation
+from xrdmica.diffraction.optics import Instrument, axial_nodes, displacement_shift, mount_factor, polarisation, tube_lines
 from xrdmica.diffraction.peak_shape import pseudo_voigt, scherrer_width
 from xrdmica.diffraction.scattering import FormFactors, anomalous, form_factor
 from xrdmica.radiation import Radiation
@@ -23,7 +23,7 @@ if TYPE_CHECKING:
 
 __all__ = ["Reflections", "march_dollase", "powder_lines", "powder_pattern", "powder_profile", "reference_pattern"]
 
-_SAME_D = 1e-5  # relative: reflections closer than this are one line
+_SAME_D = 1e-7  # relative: reflections closer than this are one line
 _CUT = 30.0  # half-widths on either side where a line is drawn
 
 
@@ -170,6 +170,8 @@ def powder_profile(
     march: float = 1.0,
     displacement: float = 0.0,
     fwhm: float | None = None,
+    mass_attenuation: float | None = None,
+    mass_mg_cm2: float | None = None,
 ) -> NDArray[np.float64]:
     """Random-powder pattern of unit mass, on the scale of `basal_intensity` seen through a random mount.
 
@@ -186,6 +188,8 @@ def powder_profile(
         [mm]
     fwhm : float, optional
         Instrument width [degree] in place of the instrument's own.
+    mass_attenuation, mass_mg_cm2 : float, optional
+        Of a film that does not stop the beam [cm^2/g, mg/cm^2]; thick without both.
 
     Returns
     -------
@@ -195,16 +199,20 @@ def powder_profile(
     if not lines.d_spacing.size:
         return out
     strength = lines.structure_factor_squared * march_dollase(lines.tilt, march) / (lines.cell_mass * lines.cell_volume)
-    for wavelength, weight in zip(radiation.wavelengths, radiation.weights, strict=True):
+    for wavelength, weight in tube_lines(radiation, instrument):
         sine = wavelength / (2 * lines.d_spacing)
         reached = sine < 0.999
         sine, power = sine[reached], strength[reached]
         angle = 2 * np.degrees(np.arcsin(sine))
         # same constants as the basal pattern: psi of a random mount is 1/(4 sin theta); area in degrees of two-theta
         lorentz = polarisation(angle, instrument.monochromator_two_theta) / (8 * sine**2 * np.sqrt(1 - sine**2))
-        area = np.degrees(weight * wavelength * power * lorentz) * mount_factor(angle, instrument)
+        area = np.degrees(weight * wavelength * power * lorentz)
+        area = area * mount_factor(angle, instrument, mass_attenuation, mass_mg_cm2)
         width = np.hypot(instrument.fwhm if fwhm is None else fwhm, scherrer_width(angle, wavelength, size))
-        _draw(out, two_theta, angle + displacement_shift(angle, displacement, instrument), area, width, instrument.lorentzian)
+        shift = displacement_shift(angle, displacement, instrument)
+        for cosine, share in axial_nodes(instrument):
+            seen = angle if cosine == 1 else np.degrees(np.arccos(np.clip(np.cos(np.radians(angle)) / cosine, -1, 1)))
+            _draw(out, two_theta, seen + shift, share * area, width, instrument.lorentzian)
     return out
 
 

@@ -3,74 +3,34 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from functools import lru_cache
 
 import numpy as np
 from numpy.typing import NDArray
 
 from xrdmica.crystals.layer import Layer
-from xrdmica.diffraction.basal import PatternGrid, StackHeights, lognormal_heights, smooth_amplitude
+from xrdmica.diffraction.basal import PatternGrid, StackHeights, layer_amplitude, lognormal_heights, smooth_amplitude
+from xrdmica.diffraction.junctions import (
+    Junctions,
+    markov_junctions,
+    ordered_junctions,
+    random_junctions,
+    two_kind_junctions,
+)
 from xrdmica.diffraction.scattering import FormFactors
 from xrdmica.errors import StructureError
+from xrdmica.radiation import Radiation
 
-__all__ = ["Junctions", "random_junctions", "stack_intensity", "stack_interference", "two_kind_junctions"]
+__all__ = [
+    "Junctions", "markov_junctions", "ordered_junctions", "random_junctions", "stack_intensity", "stack_interference",
+    "two_kind_junctions",
+]  # fmt: skip
 
+ComplexArray = NDArray[np.complex128]
+RealArray = NDArray[np.float64]
 _COARSER = 3
-
-
-@dataclass(frozen=True, eq=False)
-class Junctions:
-    """Proportions of layer kinds and the probability that kind j follows kind i.
-
-    Attributes
-    ----------
-    proportions : ndarray, shape (k,)
-        Sum 1.
-    probabilities : ndarray, shape (k, k)
-        Rows sum to 1, and proportions @ probabilities gives proportions again.
-    """
-
-    proportions: NDArray[np.float64]
-    probabilities: NDArray[np.float64]
-
-
-def random_junctions(proportions: Sequence[float] | NDArray[np.float64]) -> Junctions:
-    """R0: what follows does not depend on what was before."""
-    shares = np.asarray(proportions, dtype=float)
-    return Junctions(shares, np.tile(shares, (shares.size, 1)))
-
-
-def two_kind_junctions(first_fraction: float, reichweite: int) -> Junctions:
-    """Two kinds of layers, random (R0) or with the highest possible order between nearest neighbours (R1).
-
-    Parameters
-    ----------
-    first_fraction : float
-        Share of the first kind, 0 to 1.
-    reichweite : int
-        0 or 1. With 1 the minority layer is never next to itself.
-
-    Raises
-    ------
-    StructureError
-        For another Reichweite or a share outside 0 to 1.
-
-    References
-    ----------
-    Reynolds (1980) in Brindley & Brown, Crystal Structures of Clay Minerals, ch. 4 (from memory).
-    """
-    if not 0 <= first_fraction <= 1:
-        raise StructureError(f"share of layers {first_fraction:g}", fix="give a share from 0 to 1")
-    shares = np.array([first_fraction, 1 - first_fraction])
-    if reichweite == 0 or first_fraction in (0.0, 1.0):
-        return random_junctions(shares)
-    if reichweite != 1:
-        raise StructureError(f"Reichweite {reichweite} of two kinds", fix="use 0 or 1")
-    if first_fraction >= 0.5:
-        back = shares[1] / shares[0]
-        return Junctions(shares, np.array([[1 - back, back], [1.0, 0.0]]))
-    back = shares[0] / shares[1]
-    return Junctions(shares, np.array([[0.0, 1.0], [back, 1 - back]]))
+_SHARP = 45.0  # mean layers times coarsening: beyond this a spline would cut the tops of lines
+_SAME_EITHER_WAY = 1e-6
 
 
 def stack_interference(
@@ -88,12 +48,13 @@ def stack_interference(
     Parameters
     ----------
     amplitudes : ndarray of complex, shape (k, n)
-        Of one-sided layers: the interlayer above belongs to the layer.
+        Of one-sided layers, one per kind: the interlayer above belongs to the layer.
     spacings : ndarray, shape (k,)
         From each kind to whatever follows [angstrom].
     s : ndarray, shape (n,)
         sin(theta)/lambda [1/angstrom].
     junctions : Junctions
+        i and j above are its states, with the amplitude and spacing of the kind each ends in.
     heights : StackHeights
     spacing_disorder : float
         Standard deviation per layer, accumulating [angstrom].
@@ -102,21 +63,63 @@ def stack_interference(
     -------
     ndarray, shape (n,)
 
+    Raises
+    ------
+    StructureError
+        If the junctions speak of more kinds than there are amplitudes.
+
     References
     ----------
     Hendricks & Teller (1942) J. Chem. Phys. 10, 147; Kakinoki & Komura (1952) J. Phys. Soc. Japan 7, 30;
     Drits & Tchoubar (1990).
     """
-    weights, p = junctions.proportions, junctions.probabilities
-    pairs = heights.pair_counts
+    kinds = junctions.kinds
+    if int(kinds.max()) >= len(amplitudes) or len(amplitudes) != len(spacings):
+        raise StructureError(
+            f"junctions of {int(kinds.max()) + 1} kinds, {len(amplitudes)} amplitudes, {len(spacings)} spacings",
+            fix="give one amplitude and one spacing per kind of layer",
+        )
+    weights = junctions.proportions
     damping = np.exp(-((4 * np.pi * s * spacing_disorder) ** 2) / 2) if spacing_disorder > 0 else 1.0
-    step = np.exp(4j * np.pi * np.multiply.outer(spacings, s)) * damping
-    # Horner's rule from the far end: v <- Q (c_n F + v), so that each step costs one small matrix product
-    v = np.zeros_like(amplitudes)
+    waves: ComplexArray = np.exp(1j * (4 * np.pi * np.multiply.outer(spacings, s)))
+    step = (waves * damping)[kinds]
+    of_state: ComplexArray = np.asarray(amplitudes, dtype=np.complex128)[kinds]
+    pairs = heights.pair_counts
+    if junctions.at_random:
+        cross = _at_random(of_state, step, weights, pairs)
+    else:
+        cross = weights @ (of_state.conj() * _by_horner(of_state, step, junctions.probabilities, pairs))
+    return np.asarray(weights @ (of_state.real**2 + of_state.imag**2) + 2.0 / pairs[0] * cross.real)
+
+
+def _at_random(of_state: ComplexArray, step: ComplexArray, weights: RealArray, pairs: RealArray) -> ComplexArray:
+    """F^H W sum c_n Q^n F where all rows of P are the same: Q has rank one, and its powers are powers of one number."""
+    mean_step, total = weights @ step, np.zeros(step.shape[1:], dtype=complex)
     for pair_count in pairs[:0:-1]:
-        v = step * (p @ (pair_count * amplitudes + v))
-    cross = np.einsum("kn,k,kn->n", amplitudes.conj(), weights, v).real
-    return np.asarray(weights @ np.abs(amplitudes) ** 2 + 2.0 / pairs[0] * cross)
+        total *= mean_step
+        total += pair_count
+    return np.asarray((weights @ (of_state.conj() * step)) * (weights @ of_state) * total)
+
+
+def _by_horner(of_state: ComplexArray, step: ComplexArray, p: RealArray, pairs: RealArray) -> ComplexArray:
+    """sum c_n Q^n F by Horner's rule from the far end, v <- Q (c_n F + v): each step costs one small matrix product."""
+    v, inner = np.zeros_like(of_state), np.empty_like(of_state)
+    # P is real: real and imaginary parts side by side make it one real product
+    flat_v, flat_inner = v.view(np.float64), inner.view(np.float64)
+    for pair_count in pairs[:0:-1]:
+        np.multiply(of_state, pair_count, out=inner)
+        inner += v
+        np.matmul(p, flat_inner, out=flat_v)
+        v *= step
+    return v
+
+
+@lru_cache(maxsize=512)
+def _differs_upside_down(layer: Layer, radiation: Radiation, model: FormFactors) -> bool:
+    """Whether a crystal of this layer alone scatters differently from its two sides, which only absorption brings about."""
+    s = np.arange(1, 5) / (2 * layer.spacing)
+    up, down = (np.abs(layer_amplitude(layer, side * s, radiation, model)) ** 2 for side in (1, -1))
+    return bool(np.abs(up - down).max() > _SAME_EITHER_WAY * up.max())
 
 
 def stack_intensity(
@@ -144,16 +147,27 @@ def stack_intensity(
     Returns
     -------
     ndarray, shape (g,)
+        Stacks of kinds without a centre of symmetry (1:1 layers) count half with either side up.
     """
     from scipy.interpolate import CubicSpline
 
-    # stacks of two kinds have no sharp lines: a third of the points carries them
-    chosen = np.unique(np.append(np.arange(0, grid.s.size, _COARSER), grid.s.size - 1))
+    # short stacks of two kinds have no sharp lines: a third of the points carries them
+    coarser = min(_COARSER, max(int(_SHARP / mean_layers), 1))
+    chosen = np.unique(np.append(np.arange(0, grid.s.size, coarser), grid.s.size - 1))
     s = grid.s[chosen]
-    amplitudes = np.array([smooth_amplitude(layer, grid, model)[chosen] for layer in layers])
     spacings = np.array([layer.spacing for layer in layers])
+    areas = np.array([layer.area for layer in layers])
     heights = lognormal_heights(round(float(mean_layers), 6))
-    squared = CubicSpline(s, stack_interference(amplitudes, spacings, s, junctions, heights, spacing_disorder))(grid.s)
-    mass = float(junctions.proportions @ np.array([layer.molar_mass for layer in layers]))
-    area = float(junctions.proportions @ np.array([layer.area for layer in layers]))
-    return np.asarray(squared / (mass * area))
+    sides = (False, True) if any(_differs_upside_down(layer, grid.radiation, model) for layer in layers) else (False,)
+    total = np.zeros(s.size)
+    for upside_down in sides:
+        # per unit area: kinds that lie on each other have the same lateral extent, not the same number of formula units
+        found = [smooth_amplitude(layer, grid, model, upside_down=upside_down)[chosen] for layer in layers]
+        if upside_down:
+            # the stack turned over is the stack at -s; conjugated, the phases of the spacings stay as they are
+            found = [amplitude.conj() for amplitude in found]
+        amplitudes = np.array(found) / areas[:, None]
+        total += stack_interference(amplitudes, spacings, s, junctions, heights, spacing_disorder) / len(sides)
+    mass_per_area = float(junctions.layer_shares @ (np.array([layer.molar_mass for layer in layers]) / areas))
+    fine = total if s.size == grid.s.size else CubicSpline(s, total)(grid.s)
+    return np.asarray(fine / mass_per_area)

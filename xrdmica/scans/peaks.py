@@ -20,6 +20,7 @@ _WIDEST = 3.6
 _REACH = 1.6  # a line is fitted over this many full widths to either side
 _TOGETHER = 1.3  # lines closer than this many mean widths are fitted together
 _LARGEST_GROUP = 6
+_HOPELESS = 0.6  # share of the least significance below which a line may go together with others
 _ROUNDS = 3
 _MODEL_ERROR = 0.04  # share of a strong line that its true profile may differ from the pseudo-Voigt
 _BACKGROUND_ERROR = 0.012  # share of the background by which its estimate may bulge
@@ -251,9 +252,10 @@ def _fit_one(
     """Fit one group to the net counts without the `others`, dropping its weakest line until all that are left are significant."""
     x = scan.two_theta
     model = np.zeros_like(rest)
+    least = 3 * scan.step
     while group:
-        low = min(at - _REACH * max(width, 3 * scan.step) for at, width in group)
-        high = max(at + _REACH * max(width, 3 * scan.step) for at, width in group)
+        low = min(at - _REACH * max(width, least) for at, width in group)
+        high = max(at + _REACH * max(width, least) for at, width in group)
         span = slice(*np.searchsorted(x, (low, high)))
         if x[span].size < 4 * len(group) + 3:
             break
@@ -264,9 +266,9 @@ def _fit_one(
         inside = (fit.centre > x[0]) & (fit.centre < x[-1]) & (fit.fwhm <= _WIDEST)
         strength = np.where(inside & np.isfinite(strength), strength, 0.0)
         strength = np.where(_twins(fit), 0.0, strength)
-        weakest = int(np.argmin(strength))
-        if strength[weakest] < minimum:
-            group = group[:weakest] + group[weakest + 1 :]
+        if float(strength.min()) < minimum:
+            out = _dropped(group, strength, minimum)
+            group = [line for number, line in enumerate(group) if number not in out]
             if tuple(group) in known:
                 return known[tuple(group)]
             continue
@@ -278,6 +280,17 @@ def _fit_one(
         lines = tuple(sorted((peak.two_theta, peak.fwhm) for peak in peaks))
         return _Fitted(lines, tuple(_mark_overlaps(peaks)), model)
     return _Fitted((), (), model)
+
+
+def _dropped(group: list[tuple[float, float]], strength: NDArray[np.float64], minimum: float) -> set[int]:
+    """The weakest line, and others far below the limit that do not share their counts with one already dropped."""
+    out: set[int] = set()
+    for number in np.argsort(strength).tolist():
+        at, width = group[number]
+        alone = all(abs(at - group[other][0]) > 2 * _TOGETHER * max(width, group[other][1]) for other in out)
+        if not out or (strength[number] < _HOPELESS * minimum and alone):
+            out.add(number)
+    return out
 
 
 def _twins(fit: GroupFit) -> NDArray[np.bool_]:
