@@ -45,7 +45,7 @@ class Evidence(Record):
     weight: float = Field(description="positive speaks for the phase, negative against it")
     scan: str = Field(default="", description="label of the scan, empty when it concerns the sample")
     two_theta: float | None = Field(default=None, description="observed position, degree")
-    d_observed: float | None = Field(default=None, description="angstrom")
+    d_observed: float | None = Field(default=None, description="angstrom, the mount's displacement taken off")
     d_error: float | None = Field(default=None, description="standard error, angstrom")
     order: int | None = Field(default=None, description="basal order l of 00l")
     d_expected: float | None = Field(default=None, description="angstrom")

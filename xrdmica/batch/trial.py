@@ -5,7 +5,7 @@ from __future__ import annotations
 import json
 import tomllib
 from collections.abc import Callable, Iterator, Sequence
-from dataclasses import dataclass, replace
+from dataclasses import replace
 from functools import partial
 from hashlib import sha256
 from pathlib import Path
@@ -21,12 +21,13 @@ from xrdmica.diffraction.columns import Component
 from xrdmica.diffraction.optics import Instrument
 from xrdmica.diffraction.simulate import MountSettings, simulate_scan, usual_component
 from xrdmica.errors import XrdmicaError
+from xrdmica.report.trial_report import TrialOutcome, TrialPhase
 from xrdmica.results import SampleResult
 from xrdmica.scans.scan import Sample
 from xrdmica.scans.treatment import Treatment
 from xrdmica.scans.write import write_atomically
 
-__all__ = ["TrialOutcome", "TrialPhase", "TrialSpecification", "load_specification", "run_trial", "trial_sample"]
+__all__ = ["TrialSpecification", "load_specification", "run_trial", "trial_sample"]
 
 Range = tuple[float, float]
 
@@ -113,52 +114,6 @@ def load_specification(path: str | Path) -> TrialSpecification:
         key = ".".join(str(part) for part in first["loc"]) or "the file as a whole"
         known = ", ".join(TrialSpecification.model_fields)
         raise XrdmicaError(f"trial specification {path}: {key}: {first['msg']}", fix=f"known keys are {known}") from error
-
-
-@dataclass(frozen=True)
-class TrialPhase:
-    """One phase of one simulated sample, as it was and as it was found.
-
-    Attributes
-    ----------
-    phase : str
-    true_percent : float
-        Dry weight percent of the sheet silicates; 0 when it was not in the sample, nan for companions that were.
-    status : str
-    weight_percent, low95, high95, standard_error : float or None
-        As reported.
-    """
-
-    phase: str
-    true_percent: float
-    status: str
-    weight_percent: float | None
-    low95: float | None
-    high95: float | None
-    standard_error: float | None
-
-
-@dataclass(frozen=True)
-class TrialOutcome:
-    """One simulated sample.
-
-    Attributes
-    ----------
-    number : int
-    phases : tuple of TrialPhase
-        Every phase that was in it or was not ruled out.
-    treatments : tuple of str
-        Scans it had.
-    reduced_chi_square : float or None
-    seconds : float
-        Processor time of the analysis.
-    """
-
-    number: int
-    phases: tuple[TrialPhase, ...]
-    treatments: tuple[str, ...]
-    reduced_chi_square: float | None
-    seconds: float
 
 
 def _mixed(phase: Phase, component: Component, rng: np.random.Generator, layers: float) -> Component:

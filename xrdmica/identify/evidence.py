@@ -44,6 +44,8 @@ class LineReading:
     seen : float
         Part of the predicted height found in the data, 1 when it fits.
     peak : Peak or None
+    spacing : float or None
+        Spacing of the peak with the mount's displacement taken off [angstrom].
     """
 
     scan: int
@@ -53,6 +55,7 @@ class LineReading:
     own: float
     seen: float
     peak: Peak | None
+    spacing: float | None
 
     @property
     def found(self) -> bool:
@@ -136,7 +139,11 @@ def _read_line(
     seen = 1.0 + float((w * predicted) @ residual[window]) / float((w * predicted) @ predicted)
     peak = match_peak(item.peaks, place, 0.12)
     share = height / max(float(total[window].max()), 1e-300)
-    return LineReading(scan, line.order or -number, line, float(significance), min(share, 1.0), seen, peak)
+    spacing = None
+    if peak is not None:
+        shift = float(displacement_shift(np.array(peak.two_theta), view.displacement, view.grid.instrument))
+        spacing = float(item.scan.radiation.d_spacing(peak.two_theta - shift))
+    return LineReading(scan, line.order or -number, line, float(significance), min(share, 1.0), seen, peak, spacing)
 
 
 def _as_evidence(reading: LineReading, labels: Sequence[str], name: str) -> Evidence:
@@ -148,13 +155,13 @@ def _as_evidence(reading: LineReading, labels: Sequence[str], name: str) -> Evid
         "order": reading.order if reading.order > 0 else None,
         "d_expected": round(line.d_spacing, 4),
         "two_theta": None if peak is None else round(peak.two_theta, 4),
-        "d_observed": None if peak is None else round(peak.d_spacing, 4),
+        "d_observed": None if reading.spacing is None else round(reading.spacing, 4),
         "d_error": None if peak is None else round(peak.d_error, 4),
     }
     if reading.missing:
         text = f"{called} of {name} expected at {line.d_spacing:.3f} Å with {reading.significance:.0f} sigma is not there"
         return Evidence(kind="missing line", text=text, weight=-round(weight, 2), **common)
-    seen = f"found at {peak.d_spacing:.3f} Å" if peak is not None else "found as part of a wider line"
+    seen = f"found at {reading.spacing:.3f} Å" if reading.spacing is not None else "found as part of a wider line"
     text = f"{called} {seen}, expected {line.d_spacing:.3f} Å, height {100 * max(reading.seen, 0):.0f} % of the calculated"
     if reading.own >= _CLEAR:
         return Evidence(kind="line", text=text, weight=round(weight * reading.own, 2), **common)

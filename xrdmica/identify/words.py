@@ -65,7 +65,8 @@ def next_measurements(sample: Sample, kept: Sequence[PhaseFinding]) -> tuple[str
     for finding in open_ones:
         for other in finding.alternatives:
             out.append(f"{finding.name} or {other.name}: {other.told_by}")
-        if not finding.alternatives and finding.group != "companion":
+        waits = not organic and finding.group in ("smectite", "interstratified", "vermiculite")
+        if not finding.alternatives and finding.group != "companion" and not waits:
             out.append(f"{finding.name}: a longer count over its higher orders, and a random powder with the 060 region")
     return tuple(dict.fromkeys(out))
 
