@@ -15,7 +15,7 @@ from xrdmica.estimate.curves import STRANGERS, bare_curves, fitted_curves
 from xrdmica.estimate.shares import TOTALS, Shares, expandable_share, membership, normalise
 from xrdmica.estimate.uncertainty import detection_limits, fit_covariance, model_shifts
 from xrdmica.identify.decide import Examination, examine
-from xrdmica.matching.model import Candidate, build_model
+from xrdmica.matching.model import Candidate, build_model, composition_shows
 from xrdmica.matching.solve import Fitted, fit_model
 from xrdmica.results import (
     Basis,
@@ -37,7 +37,6 @@ FloatArray = NDArray[np.float64]
 _Z95 = 1.959964
 _STRANGE_LIMIT = 0.15  # share of unassigned line intensity beyond which percentages of a powder would mean nothing
 _POOR_FIT = 8.0  # reduced chi-square of a powder beyond which the same holds
-_EXCHANGE_GROUPS = ("true mica", "chlorite")
 _UNITS = {"spacing": "angstrom", "layers": "layers", "fraction": "share", "exchange": "apfu", "spread": "degree",
           "width": "factor", "displacement": "mm"}
 
@@ -73,8 +72,7 @@ def _fit(examination: Examination) -> Fitted | None:
         return None
     start = [item.spread(item.view.orientation_spread * selection.factor) for item in arena.prepared]
     chosen = [arena.candidates[a] for a in selection.active]
-    free = any(load_phase(c.phase).group in _EXCHANGE_GROUPS for c in chosen)
-    return fit_model(build_model(start, chosen, exchanges=free))
+    return fit_model(build_model(start, chosen, exchanges=composition_shows(chosen)))
 
 
 def _parameters(fitted: Fitted, errors: FloatArray) -> tuple[FittedParameter, ...]:

@@ -290,6 +290,7 @@ def refined(arena: Arena, selection: Selection, rounds: int = 7) -> tuple[tuple[
     if not selection.active:
         return arena.prepared, arena.candidates
     start = [item.spread(item.view.orientation_spread * selection.factor) for item in arena.prepared]
+    # composition stays at its usual value here: freed this early it takes up what belongs to other phases
     model = build_model(start, [arena.candidates[a] for a in selection.active])
     fitted = fit_model(model, rounds=rounds)
     values = fitted.evaluation.values

@@ -13,11 +13,12 @@ from xrdmica.diffraction.columns import Component, View, component_column, compo
 from xrdmica.diffraction.optics import displacement_shift, lorentz_factor
 from xrdmica.matching.prepare import Prepared
 
-__all__ = ["Candidate", "Evaluation", "Knob", "SampleModel", "build_model", "spacing_limits"]
+__all__ = ["Candidate", "Evaluation", "Knob", "SampleModel", "build_model", "composition_shows", "spacing_limits"]
 
 FloatArray = NDArray[np.float64]
 SPREAD_LIMITS = (4.0, 40.0)  # degree
 DISPLACEMENT_LIMIT = 0.6  # mm
+_EXCHANGE_GROUPS = ("true mica", "chlorite")
 _WIDTH_LIMITS = (0.3, 1.8)  # factor on the instrument width seen by the peaks
 
 
@@ -206,6 +207,11 @@ def _exchange_knobs(phase: Phase, start: dict[str, float], place: int, scans: tu
             Knob(f"{v.id}_p{place}", "exchange", value, v.minimum, v.maximum, prior, v.typical, place, scans, v.id)
         )
     return knobs
+
+
+def composition_shows(candidates: Sequence[Candidate]) -> bool:
+    """Whether some candidate's composition can be read from basal intensities: iron of micas and chlorites."""
+    return any(load_phase(candidate.phase).group in _EXCHANGE_GROUPS for candidate in candidates)
 
 
 def build_model(
