@@ -58,6 +58,14 @@ def test_sheet_as_spreadsheets_write_it(folder: Path, separator: str, end: str, 
     assert sample.scans[2].metadata["note"] == "cracked"
 
 
+@pytest.mark.parametrize("encoding", ["cp1252", "utf-16", "cp932"])
+def test_sheet_with_the_line_of_the_separator_and_other_code_pages(folder: Path, encoding: str) -> None:
+    note = {"cp932": "粘土 七号 灰色"}.get(encoding, "Tonprobe, grün, 3 °")
+    path = write(folder, f'sep=;\r\nsample;file;clay_percent;note\r\nS1;S1_AD.xy;12,5;"{note}"\r\n', encoding=encoding)
+    assert entries_from(folder).sheet == path
+    assert dict(read_sheet(path)[0].details) == {"clay_percent": "12.5", "note": note}
+
+
 def test_option_fills_rows_without_radiation(folder: Path) -> None:
     path = write(folder, "sample,file,treatment,radiation\nS1,S1_AD.xy,AD,Cu\nS1,S1_EG.xy,EG,\n")
     scans = read_sheet(path, radiation="Co")[0].load().scans
@@ -91,6 +99,8 @@ def test_what_the_sheet_leaves_out_is_noted(folder: Path) -> None:
         ("sample,file,mount\nS1,S1_AD.xy,upright\n", "row 2, column mount: mount 'upright' is not known"),
         ("sample,file,radiation\nS1,S1_AD.xy,Xx\n", "row 2, column radiation: radiation 'Xx' is not known"),
         ("sample,file\nS1,S1_AD.xy\nS1,./S1_AD.xy\n", "row 3, column file: S1_AD.xy stands in row 2"),
+        ("sample,file\nS1,S1_AD.xy\nS2,S1_AD.xy\n", "row 3, column file: S1_AD.xy stands in row 2 for sample S1"),
+        ("sample,file,treatement\nS1,S1_AD.xy,AD\n", "row 1, column treatement: looks like a misspelt 'treatment'"),
         ("sample,file,clay_percent\nS1,S1_AD.xy,much\n", "row 2, column clay_percent: 'much' is no number from 0 to 100"),
         ("sample,file,clay_percent\nS1,S1_AD.xy,101\n", "row 2, column clay_percent: '101' is no number"),
         ("sample,file,clay_percent\nS1,S1_AD.xy,10\nS1,S1_EG.xy,11\n", "row 3, column clay_percent: 11 contradicts 10"),

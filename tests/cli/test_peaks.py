@@ -55,6 +55,20 @@ def test_table_and_files(file: Path, tmp_path: Path) -> None:
     assert sorted(path.name for path in out.iterdir()) == ["p.csv", "p.json", "p.png"]
 
 
+def test_alignment_by_quartz(tmp_path: Path) -> None:
+    # quartz 100 and 101 at 20.860 and 26.640 degrees with Cu K-alpha1 (4.2550 and 3.3435 angstrom, from memory), 0.1 too high
+    x = np.arange(5, 35, 0.02)
+    model = np.full_like(x, 120.0)
+    for centre in (20.96, 26.74):
+        model = model + 2000 * np.exp(-4 * np.log(2) * ((x - centre) / 0.15) ** 2)
+    write_scan_csv(Scan.from_arrays(x, np.random.default_rng(1).poisson(model), radiation="CuKa1"), tmp_path / "S.csv")
+    result = CliRunner().invoke(main, ["peaks", str(tmp_path / "S.csv"), "--align", "quartz"])
+    assert result.exit_code == 0, result.output
+    assert "corrected for a displacement of +0.10" in " ".join(result.stderr.split())
+    assert "3.34" in result.stdout
+    assert CliRunner().invoke(main, ["peaks", str(tmp_path / "S.csv"), "--align", "granite"]).exit_code == 2
+
+
 def test_several_files_and_limit(file: Path, scan: Scan) -> None:
     limit = max(peak.height_sigma for peak in find_peaks(scan)) + 1
     result = CliRunner().invoke(main, ["peaks", str(file), str(file), "--minimum-sigma", f"{limit:.2f}"])

@@ -7,7 +7,7 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
-from xrdmica.diffraction.peak_shape import convolve_profile, pseudo_voigt, scherrer_width
+from xrdmica.diffraction.peak_shape import convolve_profile, draw_together, pseudo_voigt, scherrer_width
 
 
 @pytest.mark.parametrize("share", [0.0, 0.5, 1.0])
@@ -58,3 +58,17 @@ def test_convolution_keeps_area_constants_and_sign(fwhm: float, share: float, se
     np.testing.assert_allclose(convolve_profile(np.full(500, 3.0), 0.02, fwhm, share), 3.0, rtol=1e-9)
     # stacked curves are the same as one by one
     np.testing.assert_allclose(smeared[0], convolve_profile(values[0], 0.02, fwhm, share), atol=1e-10)
+
+
+@given(st.integers(0, 2**32 - 1), st.floats(0, 1), st.floats(0.04, 0.4))
+def test_drawing_together_is_the_sum_of_lines(seed: int, share: float, narrowest: float) -> None:
+    """Against the plain sum, also on an uneven scan in any order and with lines outside it."""
+    rng = np.random.default_rng(seed)
+    centres = rng.uniform(8.0, 62.0, 60)
+    areas = rng.uniform(0, 5, 60)
+    widths = narrowest * (1 + 0.6 * (centres / 60) ** 2)
+    two_theta = rng.permutation(np.sort(rng.uniform(10.0, 60.0, 900)))
+    plain = sum(a * pseudo_voigt(two_theta - c, w, share) for c, a, w in zip(centres, areas, widths, strict=True))
+    found = draw_together(two_theta, centres, areas, widths, share)
+    assert np.abs(found - plain).max() < 3e-3 * plain.max()
+    assert found.min() >= 0

@@ -213,3 +213,32 @@ def test_columns_are_positive_and_repeatable(phase: str, mount: str) -> None:
     assert column.min() >= -1e-12 * column.max()
     assert column.max() > 0
     np.testing.assert_array_equal(column, component_column(component, view))
+
+
+def test_thin_plates_broaden_basal_lines_alone() -> None:
+    """Muscovite plates 80 angstrom thick and 2000 wide: 002 takes the Scherrer width of 80, 060 that of 2000."""
+    instrument = Instrument(fwhm=0.02, lorentzian=0.0)
+    lines = powder_lines("muscovite", CU1, 1.45, 40.0)
+    for d, size in ((10.0, 80.0), (1.504, 2000.0)):
+        nearest = np.flatnonzero(np.abs(lines.d_spacing - d) < 0.03 * d)
+        best = nearest[lines.structure_factor_squared[nearest].argmax()]
+        centre = float(CU1.two_theta(lines.d_spacing[best]))
+        two_theta = np.arange(centre - 3, centre + 3, 0.002)
+        from dataclasses import replace
+
+        one = slice(best, best + 1)
+        alone = replace(
+            lines,
+            hkl=lines.hkl[one],
+            d_spacing=lines.d_spacing[one],
+            multiplicity=lines.multiplicity[one],
+            structure_factor_squared=lines.structure_factor_squared[one],
+            tilt=lines.tilt[one],
+        )
+        drawn = powder_profile(alone, two_theta, CU1, instrument, size=2000.0, basal_size=80.0)
+        above = two_theta[drawn > drawn.max() / 2]
+        expected = np.degrees(0.9 * CU1.wavelength / (size * np.cos(np.radians(centre / 2))))
+        if d == 10.0 or lines.tilt[best] < 1e-3:
+            assert above[-1] - above[0] == pytest.approx(np.hypot(expected, 0.02), abs=0.01)
+        else:
+            assert above[-1] - above[0] < 0.3

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import gzip
+from collections.abc import Callable
 from pathlib import Path
 
 import numpy as np
@@ -11,10 +12,11 @@ from hypothesis import HealthCheck, given, settings
 from hypothesis import strategies as st
 
 from tests.scans.scan_texts import angles, counts, table
+from xrdmica.errors import ScanError
 from xrdmica.scans.read import read_scan
 from xrdmica.scans.scan import Scan
 from xrdmica.scans.treatment import Treatment
-from xrdmica.scans.write import write_scan_csv
+from xrdmica.scans.write import write_scan_cif, write_scan_csv, write_scan_json
 
 HEADERS = [
     "",
@@ -127,6 +129,31 @@ def test_written_scans_come_back(tmp_path: Path, values: list[float], tube: str)
     assert back.radiation == scan.radiation
     assert (back.mount, back.treatment) == ("oriented", scan.treatment)
     assert [path.name for path in tmp_path.iterdir()] == ["out.csv"]
+
+
+@pytest.mark.parametrize("tube", ["Cu", "CuKa1", "Co", "1.7902"])
+@pytest.mark.parametrize("write", [write_scan_cif, write_scan_json])
+def test_other_formats_come_back(tmp_path: Path, tube: str, write: Callable[[Scan, Path], None]) -> None:
+    x, y = angles(), counts() + 0.25
+    scan = Scan.from_arrays(x, y, radiation=tube, treatment=Treatment.parse("Mg_glycerolated"), sigma=0.3 * np.sqrt(y))
+    write(scan, tmp_path / "out.txt")
+    back = read_scan(tmp_path / "out.txt")
+    np.testing.assert_array_equal(back.two_theta, scan.two_theta)
+    np.testing.assert_allclose(back.counts, scan.counts, rtol=1e-9)
+    np.testing.assert_allclose(back.sigma, scan.sigma, rtol=0.006)
+    assert back.radiation.name == scan.radiation.name
+    np.testing.assert_allclose(back.radiation.weights, scan.radiation.weights, atol=1e-6)
+    assert (back.mount, back.treatment) == ("oriented", scan.treatment)
+
+
+@pytest.mark.parametrize(
+    "text",
+    ['{"format": "xrdmica scan 1"}', '{"format": "xrdmica scan 1", "two_theta": [1], "counts": "x", "sigma": {}}'],
+)
+def test_damaged_json(tmp_path: Path, text: str) -> None:
+    (tmp_path / "scan.json").write_text(text)
+    with pytest.raises(ScanError, match="this JSON of a scan is damaged"):
+        read_scan(tmp_path / "scan.json")
 
 
 @pytest.mark.parametrize(

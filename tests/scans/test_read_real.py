@@ -88,7 +88,6 @@ def test_powder_cif_with_copper(shared: Path) -> None:
     [
         ("comma_trailing_tab.xy", r"only 20 points"),
         ("many_scans_in_columns_first6.csv", r"6 columns .* none is called two-theta"),
-        ("nexus_scan.nxs", r"HDF5 is not read yet"),
         ("headerless_comma_single.csv", r"line 1376: the angle goes back from 66.0851 to 64.9822 .* overlapping ranges"),
     ],
 )

@@ -125,7 +125,7 @@ def _is_sheet(path: Path) -> bool:
             lines = text_lines(stream.read(65536))
     except OSError:
         return False
-    first = next((line for line in lines if line.strip()), "")
+    first = next((line for line in lines if line.strip() and not line.lower().lstrip('"').startswith("sep=")), "")
     names = [cell.strip().strip('"').strip().lower() for cell in re.split(r"[,;\t]", first)]
     return "sample" in names and "file" in names
 
@@ -249,7 +249,7 @@ def read_sheet(
     tube = _tube(radiation)
     header, rows = _table(path)
     entries: dict[str, list[SheetRow]] = {}
-    seen: dict[tuple[str, Path], int] = {}
+    seen: dict[Path, tuple[int, str]] = {}
     for line, cells in rows:
         values = dict(zip(header, cells, strict=False))
         name = values.get("sample", "")
@@ -258,12 +258,12 @@ def read_sheet(
         if re.search(r"[\x00-\x1f/\\]", name) or name in (".", ".."):
             raise _wrong(path, line, "sample", f"{name!r} cannot name result files", "leave out slashes and line breaks")
         row = _row(path, line, values, tube, allow_outside)
-        key = (name, row.path.resolve())
+        key = row.path.resolve()
         if key in seen:
-            raise _wrong(
-                path, line, "file", f"{row.path.name} stands in row {seen[key]} for the same sample", "remove one of them"
-            )
-        seen[key] = line
+            earlier, owner = seen[key]
+            whose = "the same sample" if owner == name else f"sample {owner}"
+            raise _wrong(path, line, "file", f"{row.path.name} stands in row {earlier} for {whose}", "remove one of them")
+        seen[key] = (line, name)
         entries.setdefault(name, []).append(row)
     if not entries:
         raise SheetError(f"{path}: the sheet has a header but no rows", fix="add one row per scan")
@@ -285,6 +285,8 @@ def _table(path: Path) -> tuple[list[str], list[tuple[int, list[str]]]]:
     if data.startswith((b"PK\x03\x04", b"\xd0\xcf\x11\xe0")):
         raise SheetError(f"{path}: this is a spreadsheet workbook", fix="save it as CSV")
     lines = text_lines(data)
+    if lines and re.fullmatch(r"\"?sep=.?\"?[,;\t ]*", lines[0].strip("\n\r"), re.IGNORECASE):
+        lines[0] = ""  # a spreadsheet's own line that names the separator
     start = next((index for index, line in enumerate(lines) if line.strip(" \t,;")), None)
     if start is None:
         raise SheetError(f"{path}: the sheet is empty", fix="add a header with the columns sample and file, and rows")
@@ -307,6 +309,7 @@ def _table(path: Path) -> tuple[list[str], list[tuple[int, list[str]]]]:
     for column in header:
         if column and header.count(column) > 1:
             raise SheetError(f"{path}, row {start + 1}, column {column}: it stands twice in the header", fix="rename one")
+        _check_spelling(path, start + 1, column, header)
     rows = [(line, cells) for line, cells in numbered[1:] if any(cells)]
     for line, cells in rows:
         if any(cells[len(header) :]):
@@ -315,6 +318,16 @@ def _table(path: Path) -> tuple[list[str], list[tuple[int, list[str]]]]:
                 fix=f"quote cells that hold the separator {separator!r}",
             )
     return header, rows
+
+
+def _check_spelling(path: Path, line: int, column: str, header: list[str]) -> None:
+    """Refuse ``treatement``: as a column of the user's own it would be passed through and the treatment guessed."""
+    from difflib import get_close_matches
+
+    known = [*_KNOWN, *_NUMBERS]
+    close = [] if column in known else get_close_matches(column, [name for name in known if name not in header], n=1, cutoff=0.85)
+    if close:
+        raise SheetError(f"{path}, row {line}, column {column}: looks like a misspelt {close[0]!r}", fix="correct or rename it")
 
 
 def _row(path: Path, line: int, values: dict[str, str], tube: Radiation | None, allow_outside: bool) -> SheetRow:

@@ -15,6 +15,7 @@ from xrdmica.cli.options import csv_option, figure_option, json_option, radiatio
 
 if TYPE_CHECKING:
     from xrdmica.scans.peaks import Peak
+    from xrdmica.scans.read.raw import Axis
     from xrdmica.scans.scan import Scan
 
 __all__ = ["command"]
@@ -26,6 +27,15 @@ __all__ = ["command"]
     "--minimum-sigma", type=click.FloatRange(1.0, 100.0), default=4.0, show_default=True, metavar="NUMBER",
     help="Smallest significance of a peak, in standard errors of its height.",
 )  # fmt: skip
+@click.option(
+    "--axis", type=click.Choice(["two_theta", "theta", "radians", "d", "q"]),
+    help="What the files give their counts against, when it is not two-theta in degrees.",
+)
+@click.option("--column", metavar="NAME", help="Column of counts to read from a table with many scans side by side.")
+@click.option(
+    "--align", metavar="STANDARD", help="Correct the displacement of the specimen by the lines of quartz, silicon, corundum, "
+    "zincite, fluorite or fluorophlogopite in the scan.",
+)
 @csv_option
 @json_option
 @figure_option
@@ -33,6 +43,9 @@ def command(
     files: tuple[Path, ...],
     radiation: str | None,
     minimum_sigma: float,
+    axis: Axis | None,
+    column: str | None,
+    align: str | None,
     csv_file: Path | None,
     json_file: Path | None,
     figure_file: Path | None,
@@ -44,7 +57,11 @@ def command(
 
     found = []
     for path in files:
-        scan = read_scan(path, radiation=radiation)
+        scan = read_scan(path, radiation=radiation, axis=axis, column=column)
+        if align is not None:
+            from xrdmica.scans.align import aligned, shift_from_lines
+
+            scan = aligned(scan, shift_from_lines(scan, align))
         found.append((scan, find_peaks(scan, minimum_sigma=minimum_sigma)))
     for scan, peaks in found:
         _show(scan, peaks)

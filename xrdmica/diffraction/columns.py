@@ -12,10 +12,13 @@ from numpy.typing import NDArray
 
 from xrdmica.crystals.layer import Layer, build_layer
 from xrdmica.crystals.library import Phase, State, load_phase
+from xrdmica.diffraction.bands import band_intensity
 from xrdmica.diffraction.basal import PatternGrid, Sampling, basal_intensity, on_scan, sample_points
 from xrdmica.diffraction.optics import RANDOM_SPREAD
+from xrdmica.diffraction.peak_shape import convolve_profile
 from xrdmica.diffraction.powder import Reflections, powder_lines, powder_profile
 from xrdmica.diffraction.scattering import FormFactors
+from xrdmica.diffraction.specimen import film_factor
 from xrdmica.diffraction.stacking import stack_intensity, two_kind_junctions
 from xrdmica.scans.scan import Mount
 from xrdmica.scans.treatment import Treatment
@@ -289,7 +292,7 @@ def _crossed(component: Component, view: View, model: FormFactors) -> NDArray[np
     """Part of a column that is drawn line by line."""
     lines = cross_lines(component, view, model)
     if lines is None:
-        return np.zeros(view.two_theta.size)
+        return _banded(component, view, model)
     return powder_profile(
         lines,
         view.two_theta,
@@ -301,6 +304,28 @@ def _crossed(component: Component, view: View, model: FormFactors) -> NDArray[np
         mass_attenuation=view.mass_attenuation,
         mass_mg_cm2=view.mass_mg_cm2,
     )
+
+
+def turbostratic_kinds(component: Component) -> dict[str, float]:
+    """Kinds of 2:1 layers of a component that lie on each other without lateral order -> share; empty for others."""
+    phase = load_phase(component.phase)
+    if phase.stack is not None and component.fraction is not None:
+        kinds = {phase.stack.first: component.fraction, phase.stack.second: 1 - component.fraction}
+        return kinds if all(load_phase(kind).layer_type == "2:1" for kind in kinds) else {}
+    flat = phase.layer_type == "2:1" and any(polytype.name == "turbostratic" for polytype in phase.polytypes)
+    return {phase.id: 1.0} if flat else {}
+
+
+def _banded(component: Component, view: View, model: FormFactors) -> NDArray[np.float64]:
+    """hk bands of a turbostratic component; nothing where neither atoms nor 2:1 layers are known."""
+    kinds = turbostratic_kinds(component)
+    if not kinds:
+        return np.zeros(view.two_theta.size)
+    curve = band_intensity(kinds, view.grid, model=model)
+    if view.mass_attenuation is not None and view.mass_mg_cm2 is not None:
+        curve = curve * film_factor(view.grid.two_theta, view.mass_attenuation, view.mass_mg_cm2)
+    smeared = convolve_profile(curve, view.grid.step, view.width, view.grid.instrument.lorentzian)
+    return view._sampling.read(smeared)
 
 
 def expected_lines(component: Component, view: View, least_share: float = 0.02) -> tuple[ExpectedLine, ...]:

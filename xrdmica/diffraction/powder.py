@@ -13,7 +13,7 @@ from numpy.typing import NDArray
 from xrdmica.crystals.library import Phase, load_phase
 from xrdmica.crystals.polytype import cell_atoms, library_structure, structured_polytype
 from xrdmica.diffraction.optics import Instrument, axial_nodes, displacement_shift, mount_factor, polarisation, tube_lines
-from xrdmica.diffraction.peak_shape import pseudo_voigt, scherrer_width
+from xrdmica.diffraction.peak_shape import draw_together, pseudo_voigt, scherrer_width
 from xrdmica.diffraction.scattering import FormFactors, anomalous, form_factor
 from xrdmica.radiation import Radiation
 
@@ -24,7 +24,8 @@ if TYPE_CHECKING:
 __all__ = ["Reflections", "march_dollase", "powder_lines", "powder_pattern", "powder_profile", "reference_pattern"]
 
 _SAME_D = 1e-7  # relative: reflections closer than this are one line
-_CUT = 30.0  # half-widths on either side where a line is drawn
+_CUT = 30.0  # widths on either side where a line is drawn
+_MANY = 30  # lines, from which drawing all at once is faster
 
 
 @dataclass(frozen=True, eq=False)
@@ -172,6 +173,7 @@ def powder_profile(
     fwhm: float | None = None,
     mass_attenuation: float | None = None,
     mass_mg_cm2: float | None = None,
+    basal_size: float | None = None,
 ) -> NDArray[np.float64]:
     """Random-powder pattern of unit mass, on the scale of `basal_intensity` seen through a random mount.
 
@@ -190,6 +192,9 @@ def powder_profile(
         Instrument width [degree] in place of the instrument's own.
     mass_attenuation, mass_mg_cm2 : float, optional
         Of a film that does not stop the beam [cm^2/g, mg/cm^2]; thick without both.
+    basal_size : float, optional
+        Thickness of platy crystallites along c* [angstrom]; `size` is then their extent in the plane, and a line at an
+        angle to c* is broadened as by an ellipsoid. The same as `size` when left out.
 
     Returns
     -------
@@ -199,6 +204,8 @@ def powder_profile(
     if not lines.d_spacing.size:
         return out
     strength = lines.structure_factor_squared * march_dollase(lines.tilt, march) / (lines.cell_mass * lines.cell_volume)
+    thick = size if basal_size is None else basal_size
+    sizes = 1.0 / np.sqrt(lines.tilt / thick**2 + (1.0 - lines.tilt) / size**2)
     for wavelength, weight in tube_lines(radiation, instrument):
         sine = wavelength / (2 * lines.d_spacing)
         reached = sine < 0.999
@@ -208,7 +215,7 @@ def powder_profile(
         lorentz = polarisation(angle, instrument.monochromator_two_theta) / (8 * sine**2 * np.sqrt(1 - sine**2))
         area = np.degrees(weight * wavelength * power * lorentz)
         area = area * mount_factor(angle, instrument, mass_attenuation, mass_mg_cm2)
-        width = np.hypot(instrument.fwhm if fwhm is None else fwhm, scherrer_width(angle, wavelength, size))
+        width = np.hypot(instrument.fwhm if fwhm is None else fwhm, scherrer_width(angle, wavelength, sizes[reached]))
         shift = displacement_shift(angle, displacement, instrument)
         for cosine, share in axial_nodes(instrument):
             seen = angle if cosine == 1 else np.degrees(np.arccos(np.clip(np.cos(np.radians(angle)) / cosine, -1, 1)))
@@ -225,10 +232,13 @@ def _draw(
     lorentzian: float,
 ) -> None:
     """Add lines to `out`, an array of the caller's own making."""
-    total = areas.sum()
+    reach = _CUT * widths
+    near = (areas >= 1e-7 * areas.sum()) & (centres > two_theta.min() - reach) & (centres < two_theta.max() + reach)
+    centres, areas, widths = centres[near], areas[near], widths[near]
+    if centres.size > _MANY:
+        out += draw_together(two_theta, centres, areas, widths, lorentzian)
+        return
     for centre, area, width in zip(centres, areas, widths, strict=True):
-        if area < 1e-7 * total:
-            continue
         low, high = np.searchsorted(two_theta, (centre - _CUT * width, centre + _CUT * width))
         if high > low:
             out[low:high] += area * pseudo_voigt(two_theta[low:high] - centre, width, lorentzian)

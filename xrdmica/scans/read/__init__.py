@@ -1,6 +1,6 @@
 """From a diffractometer export to a Scan.
 
-Every module of this package that has `matches(head, path)` and `read(data, path)` is a reader and is asked in the
+Every module of this package that has `matches(head, path)` and `read(data, path, column)` is a reader and is asked in the
 order of its `RANK`; a new kind of file needs a new module and nothing else.
 """
 
@@ -18,8 +18,9 @@ from typing import Any
 from xrdmica.errors import ScanError, SheetError
 from xrdmica.radiation import Radiation
 from xrdmica.scans.names import guess_from_name
+from xrdmica.scans.read.axis import to_two_theta
 from xrdmica.scans.read.finish import finish
-from xrdmica.scans.read.raw import NotAScanError, RawScan
+from xrdmica.scans.read.raw import Axis, NotAScanError, RawScan
 from xrdmica.scans.read.refuse import refuse_foreign, refuse_unknown
 from xrdmica.scans.scan import Mount, RadiationOrigin, Scan
 from xrdmica.scans.treatment import Treatment
@@ -44,13 +45,15 @@ def read_scan(
     radiation_origin: RadiationOrigin = "option",
     mount: Mount | None = None,
     treatment: str | Treatment | None = None,
+    axis: Axis | None = None,
+    column: str | None = None,
 ) -> Scan:
     """Read one diffractometer export.
 
     Parameters
     ----------
     path : str or Path
-        Text table or powder CIF, also packed with gzip.
+        Text table, powder CIF, XML or NeXus (HDF5), also packed with gzip.
     radiation : str or Radiation, optional
         Tube, such as ``"Cu"``, or wavelength [angstrom]; goes before what the header says. When neither says
         anything, Cu is assumed and a note of the scan says so.
@@ -60,6 +63,11 @@ def read_scan(
         ``"oriented"`` or ``"random"``; by default read from the file name, else random with a note.
     treatment : str or Treatment, optional
         State of the mount; by default read from the file name, else ``none`` with a note.
+    axis : str, optional
+        What the file gives its intensities against: ``"two_theta"`` [degree], ``"theta"`` [degree], ``"radians"``
+        (two-theta), ``"d"`` [angstrom] or ``"q"`` [1/angstrom, unless the column says 1/nm].
+    column : str, optional
+        Name or number (from 1) of the column of intensities, for tables with many scans side by side.
 
     Returns
     -------
@@ -82,7 +90,7 @@ def read_scan(
     reader = next((module for module in _readers() if module.matches(head, path)), None)
     if reader is None:
         raise refuse_unknown(head, path)
-    raw = reader.read(data, path)
+    raw = to_two_theta(reader.read(data, path, column), str(path), axis, tube)
     guess = guess_from_name(path)
     if mount is None and state is None:
         mount, state, notes = _said_in_header(raw) or (guess.mount, guess.treatment, guess.notes)

@@ -19,7 +19,7 @@ _INTENSITY = (
 )  # fmt: skip
 _SIGMA = ("sigma", "esd", "error", "err", "sd", "stddev", "uncertainty", "sig", "standarderror", "sigmai", "e", "std")
 _SPACING = ("d", "dspacing", "dvalue", "dhkl", "spacing")
-_TRANSFER = ("q", "qvalue", "qvector", "s", "sintheta/lambda")
+_TRANSFER = ("q", "qvalue", "qvector")
 _THETA = ("theta", "omega", "th")
 _UNIT = re.compile(r"[\(\[]([^\)\]]*)[\)\]]")
 
@@ -38,6 +38,8 @@ class ColumnNames:
         Unit of the intensities.
     radians : bool
         Whether the header says that angles are in radians.
+    per_nanometre : bool
+        Whether the header says that q is in 1/nm.
     """
 
     names: tuple[str, ...]
@@ -49,6 +51,7 @@ class ColumnNames:
     theta: int
     unit: IntensityUnit
     radians: bool
+    per_nanometre: bool = False
 
     @property
     def recognised(self) -> bool:
@@ -95,7 +98,9 @@ def name_columns(names: list[str]) -> ColumnNames:
         elif cleaned[intensity].startswith(("count", "rawcounts", "totalcounts")) or "count" in units or "cts" in units:
             unit = "counts"
     angle_unit = " ".join(_UNIT.findall(names[angle].lower())) if angle >= 0 else ""
+    transfer = _find(taken, _TRANSFER)
     return ColumnNames(
         tuple(name.strip() for name in names), angle, intensity, _find(taken, _SIGMA), _find(taken, _SPACING),
-        _find(taken, _TRANSFER), _find(taken, _THETA), unit, "rad" in angle_unit and "grad" not in angle_unit,
+        transfer, _find(taken, _THETA), unit, "rad" in angle_unit and "grad" not in angle_unit,
+        transfer >= 0 and any("nm" in unit for unit in _UNIT.findall(names[transfer].lower())),
     )  # fmt: skip

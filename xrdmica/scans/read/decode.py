@@ -7,6 +7,7 @@ import re
 __all__ = ["looks_like_text", "text_lines"]
 
 _HEAD = 65536
+_PAIR = re.compile(rb"[\x81-\x9f][\x40-\x7e\x80-\xfc]")
 _CONTROL = re.compile(r"[\x00-\x08\x0e-\x1b]")
 
 
@@ -23,7 +24,7 @@ def _utf16_without_mark(head: bytes) -> str | None:
 
 
 def decode(data: bytes) -> str:
-    """Decode UTF-8 or UTF-16 (with or without byte order mark) and, failing these, the western one-byte code page.
+    """Decode UTF-8 or UTF-16 (with or without byte order mark) and, failing these, Shift-JIS or the western one-byte code page.
 
     Parameters
     ----------
@@ -45,7 +46,21 @@ def decode(data: bytes) -> str:
     try:
         return data.decode("utf-8")
     except UnicodeDecodeError:
-        return data.decode("cp1252", errors="replace")
+        return _japanese(data) or data.decode("cp1252", errors="replace")
+
+
+def _japanese(data: bytes) -> str | None:
+    """The text as Shift-JIS when it must be that.
+
+    Most of its kana and common characters begin with a byte from 0x81 to 0x9f, which western text has only for
+    curly quotes and dashes; bytes such as the degree sign are legal in both and prove nothing.
+    """
+    if len(_PAIR.findall(data[:_HEAD])) < 2:
+        return None
+    try:
+        return data.decode("cp932")
+    except UnicodeDecodeError as problem:
+        return data.decode("cp932", errors="replace") if problem.start > len(data) - 2 else None
 
 
 def looks_like_text(head: bytes) -> bool:

@@ -118,7 +118,7 @@ def _inside(raw: RawScan, source: str) -> RawScan:
     if angles[-1] < 3.2 and step < 0.01:
         raise ScanError(
             f"{source}: the angles end at {angles[-1]:.4g} with steps of {step:.2g}, which looks like radians",
-            fix="export two-theta in degrees",
+            fix="export two-theta in degrees or add the option --axis radians",
         )
     keep = angles > 0
     if not keep.all():

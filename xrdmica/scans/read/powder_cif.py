@@ -35,13 +35,13 @@ _FIX = "export the scan as two columns of text, two-theta and counts"
 
 def matches(head: bytes, path: Path) -> bool:
     """Whether the content looks like a CIF."""
-    if not looks_like_text(head):
+    if b"data_" not in head.replace(b"\x00", b"") or not looks_like_text(head):
         return False
     text = decode(head)
     return bool(re.search(r"^data_", text, re.M)) and bool(re.search(r"^\s*(?:_\w|loop_)", text, re.M))
 
 
-def read(data: bytes, path: Path) -> RawScan:
+def read(data: bytes, path: Path, column: str | None = None) -> RawScan:
     """Read the first scan of a powder CIF.
 
     Parameters
@@ -50,6 +50,8 @@ def read(data: bytes, path: Path) -> RawScan:
         Content of the file.
     path : Path
         For messages.
+    column : str or None
+        Not used: the tags say what is what.
 
     Raises
     ------
@@ -150,6 +152,10 @@ def _radiation(block: Any) -> tuple[Radiation | None, str | None]:
         waves = [single]
     if waves:
         first = radiation_from_wavelength(waves[0])
+        kind = _value(block, "_diffrn_radiation_type") or ""
+        if len(waves) == 1 and (kind == "single wavelength" or "~1~" in kind):
+            single_line = Radiation.tube(first.name, doublet=False) if "~1~" in kind and first.name.isalpha() else None
+            return single_line or Radiation.from_wavelength(waves[0]), None
         if len(waves) == 1 or len(first.wavelengths) > 1:
             return first, None
         weights = [v or 0.0 for v in (_number(t) for t in _column(block, "_diffrn_radiation_wavelength_wt"))]
@@ -175,4 +181,7 @@ def _metadata(block: Any) -> dict[str, str]:
         text = _value(block, tag)
         if text:
             items[tag.lstrip("_")] = text[:200]
+    said = re.fullmatch(r"mount (\w+), treatment (\S+)", items.get("pd_spec_description", ""))
+    if said:
+        items |= {"mount": said[1], "treatment": said[2]}
     return items

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from typing import Literal
 
 import numpy as np
@@ -12,8 +12,10 @@ from numpy.typing import NDArray
 from xrdmica.errors import ScanError
 from xrdmica.radiation import Radiation
 
-__all__ = ["IntensityUnit", "NotAScanError", "RawScan"]
+__all__ = ["AXES", "Axis", "IntensityUnit", "NotAScanError", "RawScan"]
 
+Axis = Literal["two_theta", "theta", "radians", "d", "q"]
+AXES: tuple[Axis, ...] = ("two_theta", "theta", "radians", "d", "q")
 IntensityUnit = Literal["counts", "counts per second", "unknown"]
 
 
@@ -45,6 +47,14 @@ class RawScan:
         Header items as text.
     notes : tuple of str
         Decisions of the reader.
+    axis : str or None
+        What the file says `two_theta` really holds, None when it says nothing.
+    axis_scale : float
+        What values of q are multiplied by to be in 1/angstrom.
+    axis_name : str
+        Its name in the file.
+    axis_line : int or None
+        Line that names it.
     """
 
     two_theta: NDArray[np.float64]
@@ -57,6 +67,10 @@ class RawScan:
     places: NDArray[np.int64] | None = None
     metadata: Mapping[str, str] = field(default_factory=dict)
     notes: tuple[str, ...] = ()
+    axis: Axis | None = None
+    axis_scale: float = 1.0
+    axis_name: str = ""
+    axis_line: int | None = None
 
     def place(self, index: int) -> str:
         """Where point `index` stands, in words."""
@@ -64,15 +78,11 @@ class RawScan:
 
     def points(self, keep: NDArray[np.bool_] | slice) -> RawScan:
         """The same with some of the points, or with the points in another order."""
-        return RawScan(
-            self.two_theta[keep], self.intensity[keep], None if self.sigma is None else self.sigma[keep],
-            self.unit, self.seconds, self.radiation, self.radiation_conflict,
-            None if self.places is None else self.places[keep], self.metadata, self.notes,
+        return replace(
+            self, two_theta=self.two_theta[keep], intensity=self.intensity[keep],
+            sigma=None if self.sigma is None else self.sigma[keep], places=None if self.places is None else self.places[keep],
         )  # fmt: skip
 
     def noted(self, *notes: str) -> RawScan:
         """The same with further notes."""
-        return RawScan(
-            self.two_theta, self.intensity, self.sigma, self.unit, self.seconds, self.radiation,
-            self.radiation_conflict, self.places, self.metadata, (*self.notes, *notes),
-        )  # fmt: skip
+        return replace(self, notes=(*self.notes, *notes))

@@ -12,7 +12,6 @@ __all__ = ["refuse_foreign", "refuse_unknown"]
 _EXPORT = "export the scan from the diffractometer as two columns of text, two-theta and counts"
 # first bytes of common containers (published file signatures)
 _SIGNATURES: tuple[tuple[bytes, str], ...] = (
-    (b"\x89HDF\r\n\x1a\n", "an HDF5 (NeXus) file, and HDF5 is not read yet"),
     (b"PK\x03\x04", "a zip container, perhaps a spreadsheet workbook, and these are not read"),
     (b"\xd0\xcf\x11\xe0", "an office document in binary form, and these are not read"),
     (b"%PDF", "a PDF document and holds no scan that can be read"),
@@ -36,7 +35,7 @@ def refuse_foreign(head: bytes, path: Path) -> None:
     Raises
     ------
     ScanError
-        If the content is a known container, a web page or XML.
+        If the content is a known container or a web page.
     """
     for signature, words in _SIGNATURES:
         if head.startswith(signature):
@@ -47,10 +46,6 @@ def refuse_foreign(head: bytes, path: Path) -> None:
             f"{path}: this is a web page (HTML), not a scan",
             fix="download the file itself instead of the page that shows it",
         )
-    if start.startswith((b"<?xml", b"<")):
-        raise ScanError(f"{path}: this is an XML file, and XML is not read", fix=_EXPORT)
-    if start.startswith((b"{", b"[{")):
-        raise NotAScanError(f"{path}: this is a JSON file, not a scan", fix=_EXPORT)
 
 
 def refuse_unknown(head: bytes, path: Path) -> ScanError:

@@ -2,6 +2,9 @@
 
 from __future__ import annotations
 
+import io
+import re
+from dataclasses import replace
 from pathlib import Path
 
 import numpy as np
@@ -12,7 +15,7 @@ from xrdmica.scans.read.columns import ColumnNames, name_columns
 from xrdmica.scans.read.decode import looks_like_text, text_lines
 from xrdmica.scans.read.dialect import Dialect, is_comment, split_names, table_dialect
 from xrdmica.scans.read.header import counting_seconds, header_items, header_radiation, radiation_from_wavelength
-from xrdmica.scans.read.raw import IntensityUnit, NotAScanError, RawScan
+from xrdmica.scans.read.raw import Axis, IntensityUnit, NotAScanError, RawScan
 
 __all__ = ["RANK", "matches", "read"]
 
@@ -21,6 +24,7 @@ _EXPORT = "export the scan as two columns, two-theta in degrees and counts"
 _NAME_LINES = 8  # how far above the numbers the names of the columns may stand
 _LEADING = 5  # header lines that may look like rows of numbers
 _BAD_SHARE = 0.1
+_UNPLAIN = re.compile(r"[^0-9.,;eE+\- \t\n]")
 
 
 def matches(head: bytes, path: Path) -> bool:
@@ -28,7 +32,7 @@ def matches(head: bytes, path: Path) -> bool:
     return looks_like_text(head)
 
 
-def read(data: bytes, path: Path) -> RawScan:
+def read(data: bytes, path: Path, column: str | None = None) -> RawScan:
     """Read a text table.
 
     Parameters
@@ -37,6 +41,8 @@ def read(data: bytes, path: Path) -> RawScan:
         Content of the file.
     path : Path
         For messages.
+    column : str or None
+        Name or number (from 1) of the column of intensities, for files with several.
 
     Returns
     -------
@@ -55,15 +61,18 @@ def read(data: bytes, path: Path) -> RawScan:
     dialect, mask = found
     first = _first_row(lines, dialect, mask)
     names, unknown = _names_above(lines[:first], len(mask))
-    angle, intensity, sigma, notes = _choose(names, unknown, mask, path, first)
-    wanted = [angle, intensity, *([sigma] if sigma is not None else []), *_extra(names)]
-    rows, places, skipped = _rows(lines, first, dialect, wanted, None if names else len(mask))
+    if column is not None:
+        names = _with_column(names, unknown, mask, column, f"{path}, line {first + 1}")
+    angle, intensity, sigma, axis, notes = _choose(names, unknown, mask, path, first)
+    wanted = [angle, intensity, *([sigma] if sigma is not None else []), *(_extra(names) if axis == "two_theta" else [])]
+    plain = _plain_rows(lines, first, dialect, wanted, len(mask))
+    rows, places, skipped = plain or _rows(lines, first, dialect, wanted, None if names else len(mask))
     notes += _note_skipped(skipped, places, lines, path)
     table, lead = _without_numeric_header(np.array(rows, dtype=float).reshape(-1, len(wanted)))
     if lead:
         notes.append(f"the first {lead} row(s) of numbers (from line {places[0]}) were taken as header and left out")
     at = np.array(places[lead:], dtype=np.int64)
-    head = lines[:first] + [line for line in lines[first:] if is_comment(line)]
+    head = lines[:first] + ([] if plain else [line for line in lines[first:] if is_comment(line)])
     items = header_items(head)
     radiation, conflict = header_radiation(items, items_text(head))
     unit = _unit(names, items)
@@ -71,14 +80,16 @@ def read(data: bytes, path: Path) -> RawScan:
     if sigmas is not None and names is None and not _like_errors(table[:, 1], sigmas):
         notes.append("the third column has no name and does not look like standard errors, so it was not used")
         sigmas = None
-    if radiation is None and conflict is None and names is not None and names.spacing >= 0:
+    if radiation is None and conflict is None and axis == "two_theta" and _extra(names):
         wavelength = _wavelength_of_columns(table[:, 0], table[:, -1])
         if wavelength is not None:
             radiation = radiation_from_wavelength(wavelength)
             notes.append(f"wavelength {wavelength:.4f} angstrom follows from the columns of two-theta and d")
+    scale = 0.1 if names is not None and names.per_nanometre else 1.0
     return RawScan(
-        table[:, 0], table[:, 1], sigmas, unit, counting_seconds(items), radiation, conflict, at, items, tuple(notes)
-    )
+        table[:, 0], table[:, 1], sigmas, unit, counting_seconds(items), radiation, conflict, at, items, tuple(notes),
+        axis, scale, names.names[angle] if names is not None else "", first + 1,
+    )  # fmt: skip
 
 
 def items_text(lines: list[str]) -> list[str]:
@@ -123,8 +134,8 @@ def _names_above(header: list[str], count: int) -> tuple[ColumnNames | None, lis
 
 def _choose(
     names: ColumnNames | None, unknown: list[str] | None, mask: tuple[bool, ...], path: Path, first: int
-) -> tuple[int, int, int | None, list[str]]:
-    """Which columns are angle, intensity and standard error, with notes on what had to be supposed."""
+) -> tuple[int, int, int | None, Axis | None, list[str]]:
+    """Which columns are angle, intensity and standard error, what the first is, and notes on what had to be supposed."""
     where = f"{path}, line {first + 1}"
     if names is None:
         listed = f"are {', '.join(unknown)[:120]}" if unknown else "have no names"
@@ -134,21 +145,21 @@ def _choose(
                 fix="name the columns in the line above the numbers (two-theta, counts) or export two columns",
             )
         notes = [f"columns called {' and '.join(unknown[:2])} were taken as two-theta and counts"] if unknown else []
-        return 0, 1, 2 if len(mask) == 3 else None, notes
-    if names.radians:
-        raise ScanError(f"{where}: the angles are in radians", fix="export two-theta in degrees")
-    if names.angle < 0:
-        others = ((names.spacing, "d-spacings"), (names.transfer, "values of q or s"), (names.theta, "theta"))
-        for index, words in others:
-            if index >= 0:
-                raise ScanError(
-                    f"{where}: column {names.names[index]!r} holds {words}, not two-theta",
-                    fix="export the scan against two-theta in degrees",
-                )
+        return 0, 1, 2 if len(mask) == 3 else None, None, notes
     angle, intensity = names.angle, names.intensity
+    axis: Axis | None = ("radians" if names.radians else "two_theta") if angle >= 0 else None
+    others: tuple[tuple[int, Axis], ...] = ((names.spacing, "d"), (names.transfer, "q"), (names.theta, "theta"))
+    if angle < 0:
+        angle, axis = next(((index, kind) for index, kind in others if index >= 0), (-1, None))
     if len(names.names) == 2:
         angle = 1 - intensity if angle < 0 else angle
         intensity = 1 - angle if intensity < 0 else intensity
+    if angle >= 0 and intensity < 0 and len(names.names) > 3 and names.sigma < 0:
+        listed = ", ".join(name for index, name in enumerate(names.names) if index != angle)
+        raise ScanError(
+            f"{where}: the file seems to hold {len(names.names) - 1} scans side by side ({listed[:120]})",
+            fix="say which with the option --column NAME",
+        )
     if angle < 0 or intensity < 0:
         missing = "two-theta" if angle < 0 else "counts or intensity"
         raise NotAScanError(
@@ -156,18 +167,57 @@ def _choose(
             fix=f"name the column of {missing} in the line above the numbers",
         )
     notes = []
-    if min(names.angle, names.intensity) < 0:
+    if axis is None or names.intensity < 0:
         notes = [f"columns {names.names[angle]!r} and {names.names[intensity]!r} were taken as two-theta and counts"]
-    return angle, intensity, names.sigma if names.sigma >= 0 else None, notes
+    return angle, intensity, names.sigma if names.sigma >= 0 else None, axis, notes
+
+
+def _with_column(
+    names: ColumnNames | None, unknown: list[str] | None, mask: tuple[bool, ...], column: str, where: str
+) -> ColumnNames:
+    """The columns with the wanted one as intensity."""
+    texts = list(names.names) if names is not None else list(unknown or map(str, range(1, len(mask) + 1)))
+    wanted = column.strip().lower()
+    at = next((index for index, text in enumerate(texts) if text.strip().lower() == wanted), -1)
+    if at < 0 and wanted.isdecimal() and 1 <= int(wanted) <= len(texts):
+        at = int(wanted) - 1
+    base = names or name_columns(texts)
+    angle = base.angle if max(base.angle, base.spacing, base.transfer, base.theta) >= 0 else 0
+    if at < 0 or at == angle or not mask[at]:
+        raise ScanError(f"{where}: there is no column of counts {column!r}", fix=f"choose one of {', '.join(texts)[:200]}")
+    if at == base.intensity:
+        return replace(base, angle=angle)
+    return replace(base, angle=angle, intensity=at, sigma=-1, unit="unknown")
 
 
 def _extra(names: ColumnNames | None) -> list[int]:
     return [names.spacing] if names is not None and names.spacing >= 0 else []
 
 
+def _plain_rows(
+    lines: list[str], first: int, dialect: Dialect, wanted: list[int], count: int
+) -> tuple[NDArray[np.float64], list[int], list[int]] | None:
+    """What `_rows` gives, by the compiled reader of numpy, for tables of numbers with nothing between the rows."""
+    last = len(lines)
+    while last > first and not lines[last - 1].strip():
+        last -= 1
+    block = "\n".join(lines[first:last])
+    if _UNPLAIN.search(block) or block.startswith(";") or "\n;" in block:
+        return None
+    if dialect.decimal == ",":
+        block = block.replace(",", ".")
+    try:
+        table = np.loadtxt(io.StringIO(block), delimiter=dialect.separator, comments=None, ndmin=2)
+    except (ValueError, UserWarning):
+        return None
+    if table.shape != (last - first, count):
+        return None
+    return table[:, wanted], list(range(first + 1, last + 1)), []
+
+
 def _rows(
     lines: list[str], first: int, dialect: Dialect, wanted: list[int], count: int | None
-) -> tuple[list[list[float]], list[int], list[int]]:
+) -> tuple[list[list[float]] | NDArray[np.float64], list[int], list[int]]:
     """Rows of the wanted columns, the line of each, and the lines that are no rows."""
     rows: list[list[float]] = []
     places: list[int] = []
