@@ -26,9 +26,11 @@ def stand_ins(monkeypatch: pytest.MonkeyPatch) -> None:
 
 def sheet(folder: Path, *names: str) -> Path:
     path = folder / "sheet.csv"
-    (folder / "x.xy").write_text("".join(f"{3 + 0.1 * k:.1f} {100 + k % 7}\n" for k in range(200)))
+    files = ["x.xy", *(f"x{k}.xy" for k in range(1, len(names)))]
+    for file in files:
+        (folder / file).write_text("".join(f"{3 + 0.1 * k:.1f} {100 + k % 7}\n" for k in range(200)))
     with path.open("w", encoding="utf-8", newline="") as stream:
-        csv.writer(stream).writerows([("sample", "file"), *((name, "x.xy") for name in names)])
+        csv.writer(stream).writerows([("sample", "file"), *zip(names, files, strict=False)])
     return path
 
 

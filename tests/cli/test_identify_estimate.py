@@ -37,9 +37,10 @@ def scans(tmp_path: Path) -> list[Path]:
 
 @pytest.fixture
 def sheet(tmp_path: Path) -> Path:
-    scan_file(tmp_path / "x.xy")
+    for name in ("x", "y", "z"):
+        scan_file(tmp_path / f"{name}.xy")
     path = tmp_path / "sheet.csv"
-    path.write_text("sample,file\nS1,x.xy\nbad,x.xy\nS2,x.xy\n")
+    path.write_text("sample,file\nS1,x.xy\nbad,y.xy\nS2,z.xy\n")
     return path
 
 
