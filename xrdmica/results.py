@@ -7,8 +7,9 @@ from typing import Literal
 from pydantic import BaseModel, ConfigDict, Field
 
 __all__ = [
-    "Alternative", "Curve", "Evidence", "Findings", "FitQuality", "FittedParameter", "GroupWeight", "Mark",
-    "PhaseFinding", "PhaseWeight", "Proportions", "SampleResult", "ScanSummary", "Status", "Swelling", "UnassignedLine",
+    "Alternative", "ChemistryCheck", "Curve", "Evidence", "Findings", "FitQuality", "FitWarning", "FittedParameter",
+    "GroupWeight", "IndexValue", "Mark", "NextMeasurement", "Outcome", "OxideMisfit", "PhaseFinding", "PhaseWeight",
+    "Proportions", "SampleResult", "ScanSummary", "Status", "Swelling", "UnassignedLine",
 ]  # fmt: skip
 
 Status = Literal["present", "trace", "possible", "not_detected"]
@@ -95,6 +96,25 @@ class Swelling(Record):
     measure_next: str = ""
 
 
+class Outcome(Record):
+    """What one of the phases in question would show in a measurement that is still to be made."""
+
+    phase: str
+    name: str
+    text: str = Field(description="what would be seen, in plain words")
+    d_spacing: float | None = Field(default=None, description="strongest line to look at, angstrom")
+    two_theta: float | None = Field(default=None, description="degree, with the tube of the scans at hand")
+    relative_intensity: float | None = Field(default=None, description="against the strongest line of the phase, percent")
+
+
+class NextMeasurement(Record):
+    """A measurement that would settle what is open, with what each candidate would then show."""
+
+    measurement: str
+    separates: tuple[str, ...] = Field(description="phase ids")
+    outcomes: tuple[Outcome, ...] = ()
+
+
 class Findings(Record):
     """What is in the sample, with the evidence."""
 
@@ -102,6 +122,7 @@ class Findings(Record):
     phases: tuple[PhaseFinding, ...]
     unassigned: tuple[UnassignedLine, ...] = ()
     measure_next: tuple[str, ...] = Field(default=(), description="measurements that would settle what is open")
+    next_measurements: tuple[NextMeasurement, ...] = Field(default=(), description="the same with the expected outcomes")
     notes: tuple[str, ...] = ()
 
     def of_status(self, *status: Status) -> tuple[PhaseFinding, ...]:
@@ -157,6 +178,16 @@ class FitQuality(Record):
     message: str = ""
 
 
+class FitWarning(Record):
+    """Something about the fit that a reader must know, in words."""
+
+    kind: str = Field(description="short id such as orientation, amorphous hump, unassigned, weak line, residual")
+    text: str
+    scan: str = ""
+    phase: str = ""
+    value: float | None = None
+
+
 class Proportions(Record):
     """Weight percent with intervals, dry basis (structural OH counts, interlayer water and glycol do not)."""
 
@@ -166,6 +197,46 @@ class Proportions(Record):
     groups: tuple[GroupWeight, ...] = ()
     parameters: tuple[FittedParameter, ...] = ()
     quality: FitQuality = FitQuality()
+    warnings: tuple[FitWarning, ...] = ()
+    notes: tuple[str, ...] = ()
+
+
+class IndexValue(Record):
+    """An index of the trade, or why it was not computed."""
+
+    id: str
+    name: str
+    value: float | None = None
+    standard_error: float | None = None
+    unit: str = ""
+    scan: str = Field(default="", description="label of the scan it was read from")
+    definition: str = ""
+    source: str = ""
+    validity: str = Field(default="", description="treatment and radiation it is defined for")
+    weakness: str = Field(default="", description="its known weakness in one sentence")
+    reason: str = Field(default="", description="why it was not computed; empty when it was")
+
+
+class OxideMisfit(Record):
+    """One oxide of the analysis against what the phases imply, wt %."""
+
+    oxide: str
+    measured: float
+    measured_error: float | None = None
+    implied: float
+    implied_low: float | None = None
+    implied_high: float | None = None
+    misfit_sigma: float | None = None
+
+
+class ChemistryCheck(Record):
+    """Whether the analysis of the sample agrees with its phases and proportions."""
+
+    agrees: bool | None = Field(default=None, description="None when it cannot be said")
+    text: str
+    oxides: tuple[OxideMisfit, ...] = ()
+    reconcile: tuple[str, ...] = Field(default=(), description="what would bring the two together")
+    joint: tuple[PhaseWeight, ...] = Field(default=(), description="joint estimate of scans and analysis, when asked for")
     notes: tuple[str, ...] = ()
 
 
@@ -199,6 +270,8 @@ class SampleResult(Record):
     findings: Findings
     proportions: Proportions
     swelling: Swelling
+    indices: tuple[IndexValue, ...] = ()
+    chemistry: ChemistryCheck | None = None
     curves: tuple[Curve, ...] = ()
     details: dict[str, str] = Field(default_factory=dict, description="further columns of the sample sheet")
     settings: dict[str, str] = Field(default_factory=dict, description="settings that took effect")
