@@ -5,6 +5,7 @@ from __future__ import annotations
 import pickle
 from pathlib import Path
 
+import numpy as np
 import pytest
 
 from tests.scans.scan_texts import table
@@ -102,6 +103,7 @@ def test_what_the_sheet_leaves_out_is_noted(folder: Path) -> None:
         ("sample,file\nS1,S1_AD.xy\nS2,S1_AD.xy\n", "row 3, column file: S1_AD.xy stands in row 2 for sample S1"),
         ("sample,file,treatement\nS1,S1_AD.xy,AD\n", "row 1, column treatement: looks like a misspelt 'treatment'"),
         ("sample,file,clay_percent\nS1,S1_AD.xy,much\n", "row 2, column clay_percent: 'much' is no number from 0 to 100"),
+        ("sample,file,angle_scale\nS1,S1_AD.xy,granite\n", "row 2, column angle_scale: 'granite' is not known: choose one"),
         ("sample,file,clay_percent\nS1,S1_AD.xy,101\n", "row 2, column clay_percent: '101' is no number"),
         ("sample,file,clay_percent\nS1,S1_AD.xy,10\nS1,S1_EG.xy,11\n", "row 3, column clay_percent: 11 contradicts 10"),
         ("sample,file,note\nS1,S1_AD.xy,wet, grey\n", "row 2: 4 cells but the header has 3"),
@@ -158,6 +160,32 @@ def test_folder_by_names(folder: Path) -> None:
     assert [(skip.file.name, "not a scan" in skip.reason) for skip in found.skipped] == [("minerals.csv", True)]
     core = next(entry for entry in found if entry.name == "core_150")
     assert any("says nothing of mount" in note for note in core.load().scans[0].notes)
+
+
+def test_folder_with_other_kinds_of_files(folder: Path) -> None:
+    counts = " ".join(str(100 + k % 9) for k in range(101))
+    (folder / "S7_EG.xml").write_text(
+        f"<scan><axis>2Theta<start>3.0</start><end>13.0</end></axis><counts>{counts}</counts></scan>", encoding="utf-8"
+    )
+    (folder / "settings.xml").write_text("<settings><tube>Cu</tube></settings>")
+    found = samples_in_folder(folder)
+    assert "S7" in {entry.name for entry in found}
+    assert "settings.xml" in {skip.file.name for skip in found.skipped}
+
+
+def test_angle_scale_of_a_column(tmp_path: Path) -> None:
+    # orders of SRM 675 (certificate, from memory; Cu K-alpha1), all read 0.1 degrees times cos(theta) too high
+    x = np.arange(5, 50, 0.02)
+    model = np.full_like(x, 80.0)
+    for true in (8.853, 17.758, 26.774, 35.962, 45.397):
+        seen = true + 0.1 * np.cos(np.radians(true) / 2)
+        model += 3000 * np.exp(-4 * np.log(2) * ((x - seen) / 0.15) ** 2)
+    rows = "\n".join(f"{a:.2f} {round(c)}" for a, c in zip(x, model, strict=True))
+    (tmp_path / "M_AD.xy").write_text(rows)
+    (entry,) = read_sheet(write(tmp_path, "sample,file,radiation,angle_scale\nM,M_AD.xy,CuKa1,Mica\n"))
+    (scan,) = entry.load().scans
+    assert x[0] - scan.two_theta[0] == pytest.approx(0.1, abs=0.02)
+    assert "corrected for a displacement of +0.1" in scan.notes[-1]
 
 
 def test_damaged_scan_in_a_folder_stays_a_sample(folder: Path) -> None:

@@ -13,6 +13,7 @@ from click.testing import CliRunner
 from xrdmica.cli.main import main
 from xrdmica.scans.figure import peak_figure
 from xrdmica.scans.peaks import find_peaks
+from xrdmica.scans.read import read_scan
 from xrdmica.scans.scan import Scan
 from xrdmica.scans.write import write_scan_csv
 
@@ -48,9 +49,12 @@ def test_table_and_files(file: Path, tmp_path: Path) -> None:
     with (out / "p.csv").open() as stream:
         rows = list(csv.DictReader(stream))
     np.testing.assert_allclose([float(row["two_theta"]) for row in rows], CENTRES, atol=0.02)
+    # 9.98 angstrom and its orders are the basal lines of mica (handbook, common practice)
+    assert all(any(mica in row["may_be"] for mica in ("muscovite", "phlogopite", "biotite", "illite")) for row in rows)
     (entry,) = json.loads((out / "p.json").read_text())
     assert entry["radiation"] == "CuKa1"
     np.testing.assert_allclose([peak["two_theta"] for peak in entry["peaks"]], CENTRES, atol=0.02)
+    assert [words[0].split()[-1] for words in (peak["may_be"] for peak in entry["peaks"])] == ["001", "002", "003"]
     assert (out / "p.png").read_bytes().startswith(b"\x89PNG")
     assert sorted(path.name for path in out.iterdir()) == ["p.csv", "p.json", "p.png"]
 
@@ -105,3 +109,21 @@ def test_figure_shows_scan_background_and_spacings(scan: Scan) -> None:
     assert [text.get_text() for text in first.get_legend().get_texts()] == ["scan", "background", "background + peaks"]
     assert not second.texts
     assert "2θ" in first.get_xlabel()
+
+
+@pytest.mark.parametrize("suffix", [".cif", ".csv", ".json"])
+def test_writing_the_scan(file: Path, scan: Scan, tmp_path: Path, suffix: str) -> None:
+    target = tmp_path / f"copy{suffix}"
+    assert CliRunner().invoke(main, ["peaks", str(file), "--write-scan", str(target)]).exit_code == 0
+    copy = read_scan(target)
+    np.testing.assert_allclose(copy.two_theta, scan.two_theta, atol=1e-6)
+    np.testing.assert_allclose(copy.counts, scan.counts)
+
+
+def test_writing_the_scan_refused(file: Path, tmp_path: Path) -> None:
+    result = CliRunner().invoke(main, ["peaks", str(file), "--write-scan", str(tmp_path / "copy.xls")])
+    assert result.exit_code == 2
+    assert "end the name with .cif, .csv, .json" in result.stderr
+    result = CliRunner().invoke(main, ["peaks", str(file), str(file), "--write-scan", str(tmp_path / "copy.csv")])
+    assert result.exit_code == 2
+    assert "2 scans do not go into one file" in result.stderr

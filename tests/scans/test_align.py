@@ -7,7 +7,7 @@ import pytest
 
 from xrdmica.errors import ScanError
 from xrdmica.radiation import Radiation
-from xrdmica.scans.align import aligned, shift_from_lines, shift_from_orders
+from xrdmica.scans.align import aligned, aligned_by, shift_from_lines, shift_from_orders
 from xrdmica.scans.peaks import find_peaks
 from xrdmica.scans.profile import pseudo_voigt
 from xrdmica.scans.scan import Scan
@@ -90,3 +90,10 @@ def test_scan_is_not_changed() -> None:
     corrected = aligned(scan, shift_from_lines(scan, "quartz", kind="zero"))
     np.testing.assert_array_equal(scan.two_theta, before)
     np.testing.assert_allclose(corrected.two_theta, before - 0.1, atol=0.02)
+
+
+def test_by_name() -> None:
+    assert "a displacement of +0.1" in aligned_by(measured(SRM_675, displaced=0.1), "mica").notes[-1]
+    assert "a zero of +0.1" in aligned_by(measured(QUARTZ, zero=0.1), "quartz", kind="zero").notes[-1]
+    with pytest.raises(ScanError, match=r"angle scale 'granite' is not known: choose one of quartz, .*, mica"):
+        aligned_by(measured(QUARTZ), "granite")

@@ -213,3 +213,26 @@ def test_name_tells_the_mount(tmp_path: Path, name: str, mount: str, treatment: 
     scan = read_scan(tmp_path / name)
     assert (scan.mount, scan.treatment.name) == (mount, treatment)
     assert any("file name" in note for note in scan.notes)
+
+
+def test_rows_that_stand_twice(tmp_path: Path) -> None:
+    lines = table().splitlines()
+    file = tmp_path / "twice.xy"
+    file.write_text("\n".join(line for line in lines for _ in range(2)))
+    scan = read_scan(file, radiation="Cu")
+    np.testing.assert_array_equal(scan.two_theta, angles())
+    np.testing.assert_array_equal(scan.counts, counts())
+    assert any("120 angle(s) stood twice, the same row; the first is 3 (line 2)" in note for note in scan.notes)
+
+
+def test_two_ranges_that_meet_in_a_point(tmp_path: Path) -> None:
+    lines = table().splitlines()
+    angle, count = lines[60].split()
+    lines.insert(61, f"{angle} {int(count) + 20}")
+    file = tmp_path / "joint.xy"
+    file.write_text("\n".join(lines))
+    scan = read_scan(file, radiation="Cu")
+    expected = counts()
+    expected[60] += 10
+    np.testing.assert_array_equal(scan.counts, expected)
+    assert any("1 angle(s) stood twice, with counts that agree; their mean was taken" in note for note in scan.notes)

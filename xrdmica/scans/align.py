@@ -13,7 +13,9 @@ from xrdmica.errors import ScanError
 from xrdmica.scans.peaks import Peak, find_peaks
 from xrdmica.scans.scan import Scan
 
-__all__ = ["STANDARDS", "AngleShift", "ShiftKind", "aligned", "shift_from_lines", "shift_from_orders"]
+__all__ = [
+    "ANGLE_SCALES", "STANDARDS", "AngleShift", "ShiftKind", "aligned", "aligned_by", "shift_from_lines", "shift_from_orders",
+]  # fmt: skip
 
 ShiftKind = Literal["zero", "displacement"]
 
@@ -28,6 +30,9 @@ STANDARDS: dict[str, tuple[float, ...]] = {
     "fluorite": (3.1541, 1.9315, 1.6472),
     "fluorophlogopite": (9.98104, 4.99052, 3.32701, 2.49526, 1.99621),
 }
+# about the basal spacing [angstrom] of minerals whose orders are checked among themselves
+_SERIES = {"mica": 10.0, "kaolinite": 7.15, "talc": 9.35, "pyrophyllite": 9.2}
+ANGLE_SCALES = (*STANDARDS, *_SERIES)
 _WINDOW = 0.35  # degree, farther off a line is something else
 _LEAST_SIGMA = 8.0
 _WIDEST = 0.6  # degree
@@ -221,3 +226,27 @@ def aligned(scan: Scan, shift: AngleShift) -> Scan:
     size = f"{shift.shift:+.3f} ± {shift.error:.3f} degrees"
     note = f"angles were corrected for a {shift.kind} of {size} ({shift.basis}{unchecked})"
     return replace(scan, two_theta=true, notes=(*scan.notes, note))
+
+
+def aligned_by(scan: Scan, name: str, *, kind: ShiftKind = "displacement") -> Scan:
+    """The scan on the scale that a mineral in it gives.
+
+    Parameters
+    ----------
+    scan : Scan
+        The scan.
+    name : str
+        One of `ANGLE_SCALES`: a standard with lines of known spacing, or a mineral whose basal orders must agree.
+    kind : str
+        As in `shift_from_lines`.
+
+    Raises
+    ------
+    ScanError
+        If the name is not known, the lines are not there, or they disagree.
+    """
+    if name in _SERIES:
+        return aligned(scan, shift_from_orders(scan, _SERIES[name], kind=kind)[0])
+    if name not in STANDARDS:
+        raise ScanError(f"angle scale {name!r} is not known", fix=f"choose one of {', '.join(ANGLE_SCALES)}")
+    return aligned(scan, shift_from_lines(scan, name, kind=kind))

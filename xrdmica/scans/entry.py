@@ -8,6 +8,7 @@ from pathlib import Path
 from types import MappingProxyType
 
 from xrdmica.radiation import Radiation
+from xrdmica.scans.align import aligned_by
 from xrdmica.scans.read import read_scan
 from xrdmica.scans.scan import Mount, RadiationOrigin, Sample
 from xrdmica.scans.treatment import Treatment
@@ -94,6 +95,8 @@ class SampleEntry:
             scan = read_scan(
                 row.path, radiation=row.radiation, radiation_origin=row.radiation_origin, mount=row.mount, treatment=row.treatment
             )
+            if row.details.get("angle_scale"):
+                scan = aligned_by(scan, row.details["angle_scale"])
             metadata = MappingProxyType({**scan.metadata, **row.details})
             scans.append(replace(scan, notes=(*row.notes, *scan.notes), metadata=metadata))
         return Sample(self.name, tuple(scans), self.details)

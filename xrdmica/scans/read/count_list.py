@@ -31,8 +31,9 @@ def matches(head: bytes, path: Path) -> bool:
     """Whether a header with the range of angles stands above lines that are counts alone."""
     if not looks_like_text(head):
         return False
-    # of the last line a part may be missing
-    return _split(decode(head).replace("\r\n", "\n").replace("\r", "\n").split("\n")[:200]) is not None
+    # counts that begin farther down than this are not looked for
+    most = _HEADER_LINES + 9
+    return _split(decode(head).replace("\r\n", "\n").replace("\r", "\n").split("\n", most)[:most]) is not None
 
 
 def _numbers(line: str) -> list[float] | None:

@@ -8,7 +8,7 @@ __all__ = ["looks_like_text", "text_lines"]
 
 _HEAD = 65536
 _PAIR = re.compile(rb"[\x81-\x9f][\x40-\x7e\x80-\xfc]")
-_CONTROL = re.compile(r"[\x00-\x08\x0e-\x1b]")
+_CONTROL = bytes([*range(0x09), *range(0x0E, 0x1C)])
 
 
 def _utf16_without_mark(head: bytes) -> str | None:
@@ -65,8 +65,10 @@ def _japanese(data: bytes) -> str | None:
 
 def looks_like_text(head: bytes) -> bool:
     """Whether the first bytes of a file decode to text without control characters."""
-    text = decode(head)
-    return len(_CONTROL.findall(text)) <= 0.002 * len(text)
+    # control characters are the same single bytes in every encoding but UTF-16
+    wide = head.startswith((b"\xff\xfe", b"\xfe\xff")) or _utf16_without_mark(head) is not None
+    plain = decode(head).encode() if wide else head
+    return len(plain) - len(plain.translate(None, _CONTROL)) <= 0.002 * len(plain)
 
 
 def text_lines(data: bytes) -> list[str]:

@@ -15,11 +15,13 @@ _POINT = re.compile(r"[+-]?(?:\d+\.?\d*|\.\d+)(?:e[+-]?\d{1,4})?|[+-]?(?:nan|inf
 _COMMA = re.compile(r"[+-]?\d+(?:,\d+)?(?:e[+-]?\d{1,4})?|[+-]?(?:nan|inf|infinity)", _FLAGS)
 _NUMBER = r"[+-]?(?:\d+\.\d*|\.\d+|\d+)(?:[eE][+-]?\d{1,4})?"
 _PLAIN = {
-    (mark, count): re.compile((rf"[ \t]*{mark}[ \t]*" if mark else r"[ \t]+").join([_NUMBER] * count), re.ASCII)
-    for mark in (None, "\t", ";", ",")
+    (mark, decimal, count): re.compile(
+        (rf"[ \t]*{mark}[ \t]*" if mark else r"[ \t]+").join([_NUMBER.replace(r"\.", decimal)] * count), re.ASCII
+    )
+    for mark, decimal in ((None, r"\."), ("\t", r"\."), (";", r"\."), (",", r"\."), ("\t", ","), (";", ","))
     for count in (2, 3)
 }
-_SAMPLE = 240  # lines looked at to tell the dialect
+_SAMPLE = 160  # lines looked at to tell the dialect
 
 
 @dataclass(frozen=True)
@@ -106,14 +108,14 @@ def table_dialect(lines: list[str]) -> tuple[Dialect, tuple[bool, ...]] | None:
 def _clean_dialect(sample: list[str]) -> tuple[Dialect, tuple[bool, ...]] | None:
     """The answer at once for plain tables, in which nearly every line is two or three numbers in one obvious dialect."""
     middle = sample[len(sample) // 2] if sample else ""
-    if '"' in middle or ("," in middle and (";" in middle or "\t" in middle.strip())):
+    if '"' in middle:
         return None
-    separator = next((mark for mark in ("\t", ";", ",") if mark in middle), None)
-    dialect = Dialect(separator, ".")
+    separator = next((mark for mark in ("\t", ";", ",") if mark in middle.strip()), None)
+    dialect = Dialect(separator, "," if separator in ("\t", ";") and "," in middle else ".")
     shape = tuple(number is not None for number in dialect.numbers(middle))
     if len(shape) not in (2, 3) or not all(shape):
         return None
-    pattern = _PLAIN[separator, len(shape)]
+    pattern = _PLAIN[separator, "," if dialect.decimal == "," else r"\.", len(shape)]
     good = sum(pattern.fullmatch(line.strip()) is not None for line in sample)
     return (dialect, shape) if good > 0.9 * len(sample) else None
 

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
 from types import MappingProxyType
 
 import numpy as np
@@ -17,6 +18,8 @@ __all__ = ["finish"]
 
 _AGAIN = "export the scan again as it was measured"
 _LARGEST_COUNT = 1e12
+_REPEAT_SHARE = 0.01  # of the points: more repeats come from angles with too few decimals
+_REPEAT_SIGMA = 4.0
 
 
 def finish(
@@ -89,6 +92,9 @@ def _rising(raw: RawScan, source: str) -> RawScan:
     bad = steps <= 0
     if not bad.any():
         return raw
+    merged = _merged(raw, steps)
+    if merged is not None:
+        return merged
     at = int(np.argmax(bad)) + 1
     where = f"{source}, {raw.place(at)}"
     if steps[at - 1] == 0:
@@ -103,6 +109,30 @@ def _rising(raw: RawScan, source: str) -> RawScan:
             fix="write one file per scan",
         )
     raise ScanError(f"{where}: the angles do not rise", fix="export the scan sorted by two-theta")
+
+
+def _merged(raw: RawScan, steps: NDArray[np.float64]) -> RawScan | None:
+    """The scan with repeated angles merged, when that loses nothing; None when it would.
+
+    Harmless are rows that stand twice word for word, and the few points at which two ranges of one scan meet, when their
+    counts agree within chance.
+    """
+    again = np.flatnonzero(steps == 0) + 1
+    if np.any(steps < 0) or (again.size > 1 and np.any(np.diff(again) == 1)):
+        return None
+    first, second = raw.intensity[again - 1], raw.intensity[again]
+    same = bool(np.all(first == second))
+    few = again.size <= max(1.0, _REPEAT_SHARE * steps.size)
+    near = np.abs(first - second) <= _REPEAT_SIGMA * np.sqrt(np.maximum(first + second, 1.0))
+    if not same and not (few and near.all()):
+        return None
+    intensity = raw.intensity.copy()
+    intensity[again - 1] = (first + second) / 2
+    keep = np.ones(intensity.size, dtype=bool)
+    keep[again] = False
+    how = "the same row" if same else "with counts that agree; their mean was taken"
+    words = f"{again.size} angle(s) stood twice, {how}; the first is {raw.two_theta[again[0]]:g} ({raw.place(int(again[0]))})"
+    return replace(raw, intensity=intensity).points(keep).noted(words)
 
 
 def _inside(raw: RawScan, source: str) -> RawScan:

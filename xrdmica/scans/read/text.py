@@ -2,8 +2,6 @@
 
 from __future__ import annotations
 
-import io
-import re
 from dataclasses import replace
 from pathlib import Path
 
@@ -24,7 +22,7 @@ _EXPORT = "export the scan as two columns, two-theta in degrees and counts"
 _NAME_LINES = 8  # how far above the numbers the names of the columns may stand
 _LEADING = 5  # header lines that may look like rows of numbers
 _BAD_SHARE = 0.1
-_UNPLAIN = re.compile(r"[^0-9.,;eE+\- \t\n]")
+_PLAIN = b"0123456789.,;eE+- \t\n"
 
 
 def matches(head: bytes, path: Path) -> bool:
@@ -202,12 +200,12 @@ def _plain_rows(
     while last > first and not lines[last - 1].strip():
         last -= 1
     block = "\n".join(lines[first:last])
-    if _UNPLAIN.search(block) or block.startswith(";") or "\n;" in block:
+    if block.encode("utf-8", "replace").translate(None, _PLAIN) or block.startswith(";") or "\n;" in block:
         return None
     if dialect.decimal == ",":
         block = block.replace(",", ".")
     try:
-        table = np.loadtxt(io.StringIO(block), delimiter=dialect.separator, comments=None, ndmin=2)
+        table = np.loadtxt(block.split("\n"), delimiter=dialect.separator, comments=None, ndmin=2)
     except (ValueError, UserWarning):
         return None
     if table.shape != (last - first, count):
