@@ -11,10 +11,11 @@ from xrdmica.diffraction.optics import Instrument
 from xrdmica.identify.align import align
 from xrdmica.identify.candidates import Hopeful, hopefuls
 from xrdmica.identify.evidence import ledger_for
-from xrdmica.identify.search import KEEP, RARE_FACTOR, Arena, Selection, build_arena, refined, select, settle, swapped
+from xrdmica.identify.search import KEEP, RARE_FACTOR, Arena, Selection, build_arena, inherited, refined, select, settle, swapped
 from xrdmica.identify.strangers import with_strangers
 from xrdmica.matching.linear import tied_fit
-from xrdmica.matching.prepare import prepare
+from xrdmica.matching.model import Candidate
+from xrdmica.matching.prepare import Prepared, prepare
 from xrdmica.scans.scan import Sample
 
 __all__ = ["compare", "rivals"]
@@ -28,6 +29,8 @@ _GOOD = 1.1  # reduced chi-square below which nothing is left to explain
 _SAME = 0.025
 # A look-alike of a kept phase that is needed for less than this share of its twin's lines only mends their heights.
 _MEND, _MEND_RARE = 0.1, 0.25
+_FAR = 0.1  # mm of displacement by which a first choice of phases may have bent the scans
+_HOPEFUL = 0.4  # share of what two phases explain that one may miss before it is refined
 _BADLY = 500.0  # rise of chi-square from which a phase without a line of its own stays
 
 
@@ -36,24 +39,39 @@ def compare(sample: Sample, phases: Sequence[Phase], instrument: Instrument) -> 
     prepared = prepare(sample, instrument)
     considered = hopefuls(phases, prepared)
     prepared = with_strangers(considered, align(considered, prepared))
-    candidates = settle(considered, prepared)
+    prepared_first, candidates = prepared, settle(considered, prepared)
     arena = build_arena(candidates, prepared)
     usual = _without_rare(arena)
     selection = select(usual, coarse=True)
     prepared, changed = refined(usual, selection)
     usual, kept = _better_neighbours(build_arena(changed, prepared), selection.active)
     placed = {c.phase: c for c in usual.candidates}
-    rest = [placed.get(c.phase, c) for c in candidates]
+    held = [usual.candidates[a] for a in kept]
+    rest = [placed.get(c.phase) or inherited(c, held) for c in candidates]
     arena = build_arena(rest, usual.prepared)
     chosen = select(arena)
-    first = {usual.candidates[a].phase for a in kept}
-    if {arena.candidates[a].phase for a in chosen.active} != first:
-        prepared, rest_again = refined(arena, chosen, rounds=5)
-        arena = build_arena(rest_again, prepared)
-        chosen = select(arena)
+    if {arena.candidates[a].phase for a in chosen.active} != {c.phase for c in held}:
+        arena, chosen = _placed_again(arena, chosen, candidates, prepared_first)
     labels = sample.labels
+    arena, chosen = _one_for_two(arena, chosen)
     chosen = _only_visible(arena, _usual_first(arena, _simplified(arena, chosen), labels), labels)
     return considered, *_fair_contest(*_completed(arena, chosen, labels), labels)
+
+
+def _placed_again(
+    arena: Arena, chosen: Selection, candidates: Sequence[Candidate], prepared: Sequence[Prepared]
+) -> tuple[Arena, Selection]:
+    """Refine a set that differs from the one the scans were placed by, from there and from the start, and take the better."""
+    moved = max(abs(a.view.displacement - b.view.displacement) for a, b in zip(arena.prepared, prepared, strict=True))
+    starts = [(arena, 5)]
+    if moved > _FAR:
+        starts.append((build_arena(candidates, prepared), 10))
+    found = []
+    for start, rounds in starts:
+        views, changed = refined(start, _held(start, chosen.active), rounds=rounds)
+        again = build_arena(changed, views)
+        found.append((again, select(again)))
+    return min(found, key=lambda pair: pair[1].fit.chi_square + KEEP * len(pair[1].active) * pair[1].noise)
 
 
 def _without_rare(arena: Arena) -> Arena:
@@ -152,6 +170,46 @@ def _simplified(arena: Arena, selection: Selection) -> Selection:
             if fit.chi_square - selection.fit.chi_square < KEEP * selection.noise:
                 return _simplified(arena, _among(arena, active))
     return selection
+
+
+def _one_for_two(arena: Arena, selection: Selection, tries: int = 3) -> tuple[Arena, Selection]:
+    """Put one phase, refined, in place of two kept neighbours: usual phases mixed can imitate one that is less usual.
+
+    Parameters
+    ----------
+    arena, selection
+        As compared so far.
+    tries : int
+        Refinements allowed.
+
+    Returns
+    -------
+    Arena, Selection
+    """
+    trials = []
+    for one, two in combinations(selection.active, 2):
+        if not (_neighbours(arena, one, two) and _single_lines(arena, one) and _single_lines(arena, two)):
+            continue
+        worth = max(float(selection.need[one].sum()), float(selection.need[two].sum()))
+        for place in range(len(arena.candidates)):
+            if place in selection.active or not (_neighbours(arena, one, place) and _neighbours(arena, two, place)):
+                continue
+            active = (*(a for a in selection.active if a not in (one, two)), place)
+            rise = _held(arena, active).fit.chi_square - selection.fit.chi_square
+            if rise < _HOPEFUL * worth:
+                trials.append((rise, active))
+    for _, active in sorted(trials)[:tries]:
+        prepared, candidates = refined(arena, _held(arena, active), rounds=6)
+        fresh = build_arena(candidates, prepared)
+        held = _held(fresh, active)
+        if held.fit.chi_square < selection.fit.chi_square + KEEP * selection.noise:
+            return _one_for_two(fresh, _among(fresh, active), tries)
+    return arena, selection
+
+
+def _single_lines(arena: Arena, place: int) -> bool:
+    """Whether a candidate is one kind of layer, with lines that can be neighbours of others."""
+    return all(c is None or (bool(c.spacings) and c.fraction is None) for c in arena.candidates[place].components)
 
 
 def _usual_first(arena: Arena, selection: Selection, labels: Sequence[str]) -> Selection:

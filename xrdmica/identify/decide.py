@@ -21,7 +21,7 @@ __all__ = ["Examination", "examine", "identify"]
 _TRACE = 0.025  # share of the sheet silicates below which a phase is called a trace
 # layers whose spacing depends on what is between them are named only by what a treatment does to them (common practice)
 _NEED_TREATMENT = ("smectite", "interstratified", "vermiculite")
-_TELLING = ("glycolated", "glycerolated", "heated")
+_ORGANIC = ("glycolated", "glycerolated")
 _POOR = 4.0  # reduced chi-square
 
 
@@ -72,13 +72,22 @@ def _told_by(phase: str, other: str) -> str:
     return "a random powder with the 060 region, and a chemical analysis"
 
 
+def _treatments_tell(arena: Arena) -> bool:
+    """Whether the mounts can show what is between the layers: glycol, or heating beside a mount that was not heated.
+
+    A heated mount alone cannot: collapsed smectite stands where mica does.
+    """
+    conditions = {item.scan.treatment.condition for item in arena.prepared}
+    return bool(conditions & set(_ORGANIC)) or ("heated" in conditions and len(conditions) > 1)
+
+
 def _kept_finding(arena: Arena, selection: Selection, place: int, labels: Sequence[str], share: float) -> PhaseFinding:
     candidate = arena.candidates[place]
     phase = load_phase(candidate.phase)
     ledger = ledger_for(arena, selection, place, labels)
     common, rare = rivals(arena, selection, place)
     conditions = len({item.scan.treatment.name for item in arena.prepared})
-    treated = ledger.moved or any(s.scan.treatment.condition in _TELLING for s in arena.prepared)
+    treated = ledger.moved or _treatments_tell(arena)
     powder = all(item.scan.mount == "random" for item in arena.prepared)
     convincing = _convincing(ledger, conditions, powder and phase.is_sheet_silicate and selection.noise > _POOR)
     if not convincing:

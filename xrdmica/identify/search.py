@@ -19,7 +19,7 @@ from xrdmica.matching.model import Candidate, build_model, spacing_limits
 from xrdmica.matching.prepare import Prepared
 from xrdmica.matching.solve import fit_model
 
-__all__ = ["KEEP", "RARE_FACTOR", "Arena", "Selection", "build_arena", "refined", "select", "settle", "swapped"]
+__all__ = ["KEEP", "RARE_FACTOR", "Arena", "Selection", "build_arena", "inherited", "refined", "select", "settle", "swapped"]
 
 _WIDTHS = (0.6, 1.6)  # factors on the usual stack height tried at first
 _SPREAD_FACTORS = (0.7, 1.0, 1.4)
@@ -301,11 +301,11 @@ def refined(arena: Arena, selection: Selection, rounds: int = 7) -> tuple[tuple[
         place: Candidate(arena.candidates[place].phase, tuple(model.component(j, k, values) for k in scans))
         for j, place in enumerate(selection.active)
     }
-    candidates = tuple(kept.get(i) or _inherit(one, tuple(kept.values())) for i, one in enumerate(arena.candidates))
+    candidates = tuple(kept.get(i) or inherited(one, tuple(kept.values())) for i, one in enumerate(arena.candidates))
     return prepared, candidates
 
 
-def _inherit(candidate: Candidate, kept: Sequence[Candidate]) -> Candidate:
+def inherited(candidate: Candidate, kept: Sequence[Candidate]) -> Candidate:
     """Give a candidate the spacing and stack height of the kept one whose lines it would have to explain."""
     variable = load_phase(candidate.phase).variable("mean_layers")
     out = []
