@@ -50,6 +50,7 @@ class Evidence(Record):
     d_error: float | None = Field(default=None, description="standard error, angstrom")
     order: int | None = Field(default=None, description="basal order l of 00l")
     d_expected: float | None = Field(default=None, description="angstrom")
+    intensity_ratio: float | None = Field(default=None, description="observed over calculated height, or ratio of heights")
 
 
 class Alternative(Record):

@@ -30,7 +30,7 @@ _SAME = 0.025
 # A look-alike of a kept phase that is needed for less than this share of its twin's lines only mends their heights.
 _MEND, _MEND_RARE = 0.1, 0.25
 _FAR = 0.1  # mm of displacement by which a first choice of phases may have bent the scans
-_HOPEFUL = 0.4  # share of what two phases explain that one may miss before it is refined
+_HOPEFUL = 0.4  # share of what several phases explain that one may miss before it is refined
 _BADLY = 500.0  # rise of chi-square from which a phase without a line of its own stays
 
 
@@ -53,7 +53,7 @@ def compare(sample: Sample, phases: Sequence[Phase], instrument: Instrument) -> 
     if {arena.candidates[a].phase for a in chosen.active} != {c.phase for c in held}:
         arena, chosen = _placed_again(arena, chosen, candidates, prepared_first)
     labels = sample.labels
-    arena, chosen = _one_for_two(arena, chosen)
+    arena, chosen = _one_for_several(arena, chosen)
     chosen = _only_visible(arena, _usual_first(arena, _simplified(arena, chosen), labels), labels)
     return considered, *_fair_contest(*_completed(arena, chosen, labels), labels)
 
@@ -172,8 +172,8 @@ def _simplified(arena: Arena, selection: Selection) -> Selection:
     return selection
 
 
-def _one_for_two(arena: Arena, selection: Selection, tries: int = 3) -> tuple[Arena, Selection]:
-    """Put one phase, refined, in place of two kept neighbours: usual phases mixed can imitate one that is less usual.
+def _one_for_several(arena: Arena, selection: Selection, tries: int = 3) -> tuple[Arena, Selection]:
+    """Put one phase, refined, in place of all kept neighbours: usual phases mixed can imitate one that is less usual.
 
     Parameters
     ----------
@@ -186,24 +186,24 @@ def _one_for_two(arena: Arena, selection: Selection, tries: int = 3) -> tuple[Ar
     -------
     Arena, Selection
     """
+    single = {a for a in range(len(arena.candidates)) if _single_lines(arena, a)}
     trials = []
-    for one, two in combinations(selection.active, 2):
-        if not (_neighbours(arena, one, two) and _single_lines(arena, one) and _single_lines(arena, two)):
+    for place in single:
+        near = [a for a in selection.active if a in single and (a == place or _neighbours(arena, a, place))]
+        if len(near) < 2 or (place in near and load_phase(arena.candidates[place].phase).occurrence == "common"):
             continue
-        worth = max(float(selection.need[one].sum()), float(selection.need[two].sum()))
-        for place in range(len(arena.candidates)):
-            if place in selection.active or not (_neighbours(arena, one, place) and _neighbours(arena, two, place)):
-                continue
-            active = (*(a for a in selection.active if a not in (one, two)), place)
-            rise = _held(arena, active).fit.chi_square - selection.fit.chi_square
-            if rise < _HOPEFUL * worth:
-                trials.append((rise, active))
+        rest = [a for a in selection.active if a not in near]
+        lost = tied_fit([s.subset(rest) for s in arena.systems[selection.factor]]).chi_square if rest else float("inf")
+        active = (*rest, place)
+        rise = _held(arena, active).fit.chi_square - selection.fit.chi_square
+        if rise < _HOPEFUL * (lost - selection.fit.chi_square):
+            trials.append((rise, active))
     for _, active in sorted(trials)[:tries]:
         prepared, candidates = refined(arena, _held(arena, active), rounds=6)
         fresh = build_arena(candidates, prepared)
         held = _held(fresh, active)
         if held.fit.chi_square < selection.fit.chi_square + KEEP * selection.noise:
-            return _one_for_two(fresh, _among(fresh, active), tries)
+            return _one_for_several(fresh, _among(fresh, active), tries)
     return arena, selection
 
 

@@ -7,12 +7,15 @@ from dataclasses import dataclass
 
 from xrdmica.crystals.library import Phase, all_phases, load_phase
 from xrdmica.diffraction.optics import Instrument
+from xrdmica.identify.absent import absent_evidence
 from xrdmica.identify.candidates import Hopeful
 from xrdmica.identify.contest import compare, rivals
 from xrdmica.identify.evidence import Ledger, ledger_for
+from xrdmica.identify.next_steps import next_steps
 from xrdmica.identify.search import Arena, Selection
 from xrdmica.identify.unassigned import unassigned_lines
-from xrdmica.identify.words import absent_reason, kept_reason, next_measurements, sample_notes
+from xrdmica.identify.words import absent_reason, fibre_notes, kept_reason, next_measurements, sample_notes
+from xrdmica.matching.prepare import Prepared
 from xrdmica.results import Alternative, Findings, PhaseFinding, Status
 from xrdmica.scans.scan import Sample
 
@@ -108,7 +111,9 @@ def _kept_finding(arena: Arena, selection: Selection, place: int, labels: Sequen
     )  # fmt: skip
 
 
-def _other_finding(one: Hopeful, kept: Sequence[PhaseFinding], labels: Sequence[str]) -> PhaseFinding:
+def _other_finding(
+    one: Hopeful, kept: Sequence[PhaseFinding], labels: Sequence[str], prepared: Sequence[Prepared]
+) -> PhaseFinding:
     """The finding on a phase that was not kept: an alternative of a kept one, or not detected."""
     phase = one.phase
     stands_for = [f for f in kept if any(a.phase == phase.id for a in f.alternatives)]
@@ -120,8 +125,9 @@ def _other_finding(one: Hopeful, kept: Sequence[PhaseFinding], labels: Sequence[
     else:
         status, reason, alternatives = "not_detected", absent_reason(one, labels), ()
     return PhaseFinding(
-        phase=phase.id, name=phase.name, group=phase.group, status=status, reason=reason, alternatives=alternatives
-    )
+        phase=phase.id, name=phase.name, group=phase.group, status=status, reason=reason, alternatives=alternatives,
+        evidence=absent_evidence(one, prepared, labels) if phase.is_sheet_silicate and status == "not_detected" else (),
+    )  # fmt: skip
 
 
 def examine(sample: Sample, phases: Sequence[Phase] | None = None, instrument: Instrument | None = None) -> Examination:
@@ -146,15 +152,17 @@ def examine(sample: Sample, phases: Sequence[Phase] | None = None, instrument: I
     shares = {a: selection.amount(a) / total if a in plates and total > 0 else 1.0 for a in selection.active}
     kept = [_kept_finding(arena, selection, a, labels, shares[a]) for a in selection.active]
     names = {finding.phase for finding in kept}
-    others = [_other_finding(one, kept, labels) for one in considered if one.phase.id not in names]
+    others = [_other_finding(one, kept, labels, arena.prepared) for one in considered if one.phase.id not in names]
     kept.sort(key=lambda f: -next(shares[a] for a in selection.active if arena.candidates[a].phase == f.phase))
     others.sort(key=lambda f: (f.status != "possible", f.phase))
+    unassigned = unassigned_lines(arena, selection, labels)
     findings = Findings(
         sample=sample.name,
         phases=(*kept, *others),
-        unassigned=unassigned_lines(arena, selection, labels),
+        unassigned=unassigned,
         measure_next=next_measurements(sample, kept),
-        notes=sample_notes(sample, arena),
+        next_measurements=next_steps(sample, kept),
+        notes=(*sample_notes(sample, arena), *fibre_notes(kept, unassigned)),
     )
     return Examination(sample, arena, selection, findings)
 

@@ -25,6 +25,9 @@ _CLEAR = 0.5  # share of the calculated height from which a line belongs to one 
 _SHARED = 0.12
 _FULL_WEIGHT = 30.0  # sigma
 _MOVED = 0.5  # angstrom
+_LEAST_RATIO = 0.01
+# logarithms of 1.3 and 1.8: what composition and orientation leave open, and what they do not (common practice)
+_RATIO_AGREES, _RATIO_DISAGREES = 0.26, 0.59
 
 
 @dataclass(frozen=True)
@@ -157,6 +160,7 @@ def _as_evidence(reading: LineReading, labels: Sequence[str], name: str) -> Evid
         "two_theta": None if peak is None else round(peak.two_theta, 4),
         "d_observed": None if reading.spacing is None else round(reading.spacing, 4),
         "d_error": None if peak is None else round(peak.d_error, 4),
+        "intensity_ratio": round(max(reading.seen, 0.0), 3),
     }
     if reading.missing:
         text = f"{called} of {name} expected at {line.d_spacing:.3f} Å with {reading.significance:.0f} sigma is not there"
@@ -167,6 +171,31 @@ def _as_evidence(reading: LineReading, labels: Sequence[str], name: str) -> Evid
         return Evidence(kind="line", text=text, weight=round(weight * reading.own, 2), **common)
     text += f"; {100 * (1 - reading.own):.0f} % of the line belongs to other phases"
     return Evidence(kind="overlap", text=text, weight=round(0.3 * weight * reading.own, 2), **common)
+
+
+def _ratios(readings: Sequence[LineReading], labels: Sequence[str]) -> list[Evidence]:
+    """Heights of the orders against the first one, where both belong to the phase alone: what composition shows in."""
+    out = []
+    for k in sorted({r.scan for r in readings}):
+        clear = {r.order: r for r in readings if r.scan == k and r.order > 0 and r.clear}
+        first = clear.get(1)
+        if first is None:
+            continue
+        for order in (2, 3):
+            other = clear.get(order)
+            if other is None or other.line.share < _LEAST_RATIO * first.line.share:
+                continue
+            expected = other.line.share / first.line.share
+            factor = max(other.seen, 0.0) / max(first.seen, 1e-6)
+            off = abs(np.log(max(factor, 1e-3)))
+            weight = 0.5 if off < _RATIO_AGREES else -1.0 if off > _RATIO_DISAGREES else 0.0
+            text = f"I(00{order})/I(001) is {expected * factor:.2f}, calculated {expected:.2f}"
+            out.append(
+                Evidence(
+                    kind="intensity", text=text, weight=weight, scan=labels[k], order=order, intensity_ratio=round(factor, 3)
+                )
+            )
+    return out
 
 
 def _behaviour(readings: Sequence[LineReading], arena: Arena, place: int, labels: Sequence[str]) -> tuple[list[Evidence], bool]:
@@ -234,11 +263,10 @@ def ledger_for(arena: Arena, selection: Selection, place: int, labels: Sequence[
     fit = Evidence(kind="fit", text=rise, weight=round(float(np.clip(np.sqrt(max(need.sum(), 0)) / 10, 0, 3)), 2))
     return Ledger(
         tuple(readings),
-        (*lines, *behaviour, fit),
+        (*lines, *_ratios(readings, labels), *behaviour, fit),
         len(clear),
         len(shared),
         sum(r.missing for r in readings),
         moved,
         any(r.order in (1, -1) and r.clear and r.peak is not None for r in readings),
     )
-

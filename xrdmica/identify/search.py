@@ -156,7 +156,7 @@ def _textured(component: Component, height: float | None, fraction: float | None
 
 
 def settle(hopeful: Sequence[Hopeful], prepared: Sequence[Prepared]) -> tuple[Candidate, ...]:
-    """Choose states, spacings and stack heights for every plausible phase by letting all options compete, scan by scan.
+    """Choose states, spacings and stack heights for every plausible phase by letting options compete, scan by scan.
 
     Parameters
     ----------
@@ -170,7 +170,13 @@ def settle(hopeful: Sequence[Hopeful], prepared: Sequence[Prepared]) -> tuple[Ca
     """
     plausible = [one for one in hopeful if one.plausible]
     options = [_options(one, prepared) for one in plausible]
-    scores = [_first_guess([one[k] for one in options], item) for k, item in enumerate(prepared)]
+    # a stack with next to no second layer imitates a pure phase: pure phases choose their states without stacks about
+    pure = [[() if one.phase.stack else found for found in choice] for one, choice in zip(plausible, options, strict=True)]
+    scores = []
+    for k, item in enumerate(prepared):
+        alone = _first_guess([one[k] for one in pure], item)
+        among_all = _first_guess([one[k] for one in options], item)
+        scores.append([b if one.phase.stack else a for one, a, b in zip(plausible, alone, among_all, strict=True)])
     return tuple(
         Candidate(one.phase.id, _choose(options[j], [scores[k][j] for k in range(len(prepared))]))
         for j, one in enumerate(plausible)

@@ -8,10 +8,12 @@ from xrdmica.crystals.library import Phase
 from xrdmica.identify.candidates import Hopeful
 from xrdmica.identify.evidence import Ledger
 from xrdmica.identify.search import Arena
-from xrdmica.results import PhaseFinding, Status
+from xrdmica.results import PhaseFinding, Status, UnassignedLine
 from xrdmica.scans.scan import Sample
 
-__all__ = ["absent_reason", "kept_reason", "next_measurements", "sample_notes"]
+__all__ = ["absent_reason", "fibre_notes", "kept_reason", "next_measurements", "sample_notes"]
+
+_AMPHIBOLE = (8.3, 8.55)  # angstrom, 110 of amphiboles, handbook, from memory
 
 def _listed(names: Sequence[str]) -> str:
     return names[0] if len(names) == 1 else f"{', '.join(names[:-1])} and {names[-1]}"
@@ -55,7 +57,7 @@ def next_measurements(sample: Sample, kept: Sequence[PhaseFinding]) -> tuple[str
     oriented = [scan for scan in sample.scans if scan.mount == "oriented"]
     organic = [s for s in sample.scans if s.treatment.condition in ("glycolated", "glycerolated")]
     heated = [s for s in sample.scans if s.treatment.condition == "heated"]
-    low = [f for f in kept if (f.basal_spacing or 0) > 9.8 or f.group == "interstratified"]
+    low = [f for f in kept if (f.basal_spacing or 0) > 9.8 or f.group in ("smectite", "interstratified")]
     if not oriented:
         out.append("an oriented mount of the clay fraction, air-dried: basal lines stand out there")
     if not organic and (low or not oriented):
@@ -87,3 +89,18 @@ def sample_notes(sample: Sample, arena: Arena) -> tuple[str, ...]:
             off = f"{item.view.displacement:+.2f} mm"
             notes.append(f"{label}: the specimen stands {off} off its place; mount it again if you can")
     return tuple(notes)
+
+
+def fibre_notes(kept: Sequence[PhaseFinding], unassigned: Sequence[UnassignedLine]) -> tuple[str, ...]:
+    """A note where minerals are met that may be fibrous, or that come with such."""
+    names = {f.phase: f.name for f in kept}
+    amphibole = "amphibole" in names or any(_AMPHIBOLE[0] <= line.d_spacing <= _AMPHIBOLE[1] for line in unassigned)
+    found = [names[phase] for phase in ("serpentine", "palygorskite", "sepiolite", "amphibole") if phase in names]
+    if "talc" in names and amphibole:
+        found = [*found, "talc with an amphibole line"]
+    if not found:
+        return ()
+    return (
+        f"{_listed(found)}: may be fibrous, which diffraction cannot tell; handle the sample as if it were, have it looked at by "
+        "microscopy, and follow the local rules",
+    )

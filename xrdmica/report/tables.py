@@ -128,7 +128,7 @@ def result_table(result: SampleResult, console: Console) -> None:
     _weights(result, console)
     _alternatives(result.findings, console)
     _unassigned(result.findings, console)
-    _list(console, "Measure next", result.findings.measure_next)
+    _measure_next(result.findings, console)
     _list(console, "Notes", (n for n in all_notes(result) if not n.startswith("radiation assumed for")))
     _list(console, "Cautions", result.cautions)
 
@@ -263,8 +263,18 @@ def evidence_table(
         for f in absent:
             _add(table, f.name, f.reason)
         _section(console, "Not detected", table)
-    _list(console, "Measure next", findings.measure_next)
+    _measure_next(findings, console)
     _list(console, "Notes", findings.notes)
+
+
+def _measure_next(findings: Findings, console: Console) -> None:
+    """What would settle the open questions, then what each candidate would show there."""
+    _list(console, "Measure next", findings.measure_next)
+    lines = [
+        f"{step.measurement}: " + "; ".join(f"{outcome.name}: {outcome.text}" for outcome in step.outcomes)
+        for step in findings.next_measurements
+    ]
+    _list(console, "What would then be seen (calculated)", lines)
 
 
 def _one_phase(f: PhaseFinding, console: Console, most: int | None) -> None:
@@ -294,7 +304,7 @@ def _evidence_cells(e: Evidence) -> tuple[str, ...]:
     return (
         "+" if e.weight > 0 else "-" if e.weight < 0 else "",
         f"{abs(e.weight):.1f}",
-        f"{order}: {e.text}" if order else e.text,
+        e.text if not order or order in e.text else f"{order}: {e.text}",
         e.scan,
         "" if e.two_theta is None else f"{e.two_theta:.2f}",
         found,
