@@ -27,11 +27,14 @@ def make_sample(
     phase_spread: float = 0.08,
     name: str = "simulated",
     radiation: str = "Cu",
+    spread: float | None = None,
+    exchanges: Mapping[str, tuple[tuple[str, float], ...]] | None = None,
 ) -> Sample:
     """A sample of known weights, scanned after each treatment."""
     rng = np.random.default_rng(seed)
     instrument = Instrument(soller_incident=4.0, soller_diffracted=4.0, fwhm=0.085, lorentzian=0.6)
-    spread = float(rng.uniform(9, 16))
+    usual = float(rng.uniform(9, 16))
+    spread = usual if spread is None else spread
     factors = {phase: float(rng.normal(1.0, phase_spread)) for phase in weights}
     stretch = {phase: float(np.exp(rng.normal(0, 0.2))) for phase in weights}
     scans = []
@@ -42,6 +45,8 @@ def make_sample(
             component = usual_component(phase, treatment)
             if component is not None and component.states:
                 component = replace(component, mean_layers=component.mean_layers * stretch[phase])
+                if exchanges and phase in exchanges:
+                    component = replace(component, exchanges=exchanges[phase])
             parts[phase] = component
         settings = MountSettings(
             high=high, peak_counts=peak_counts, displacement=float(rng.normal(0, displacement)), orientation_spread=spread,

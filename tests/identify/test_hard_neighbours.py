@@ -37,7 +37,7 @@ def words(found: PhaseFinding) -> str:
     [
         "talc", "pyrophyllite", "minnesotaite", "kerolite",  # 9.2 to 9.6
         "margarite", "paragonite", "clintonite",  # 9.5 to 9.7
-        "illite", "glauconite", "biotite", "phlogopite",  # 10: I(002)/I(001), width
+        "illite", "biotite", "phlogopite",  # 10: I(002)/I(001), width
         "serpentine", "chlorite",  # 7.1 to 7.3
         "halloysite", "palygorskite",  # 10 to 10.5, and what treatments do
         "illite_smectite_r1", "chlorite_smectite",  # ordered, with superlattices
@@ -54,6 +54,25 @@ def test_what_a_basal_series_cannot_name_keeps_its_twins(phase: str) -> None:
     findings = identify(make_sample({phase: 100}, FULL, seed=21))
     assert phase in sheets(findings, "present")
     assert sheets(findings, "possible") <= {"phengite", "illite", "lepidolite", "glauconite", "dickite", "nacrite"}
+
+
+def test_glauconite_is_left_open_against_its_series_and_is_no_other_mica() -> None:
+    # illite to glauconite is one series in ferric iron; biotite and phlogopite have 060 at 1.54 (handbook, from memory)
+    findings = identify(make_sample({"glauconite": 100}, FULL, seed=21))
+    assert finding(findings, "glauconite").status in ("present", "possible")
+    assert sheets(findings, "present", "trace", "possible") <= {"glauconite", "illite", "celadonite"}
+
+
+@pytest.mark.parametrize(("iron", "expected"), [(0.2, {"phlogopite"}), (1.5, {"biotite"})])
+def test_iron_names_the_dark_mica(iron: float, expected: set[str]) -> None:
+    findings = identify(make_sample({"biotite": 60, "chlorite": 40}, FULL, seed=21, exchanges={"biotite": (("fe", iron),)}))
+    assert sheets(findings, "present", "trace") - {"chlorite"} == expected
+
+
+def test_dark_mica_at_the_boundary_is_left_open() -> None:
+    # Mg:Fe about 2:1, the traditional boundary of the names phlogopite and biotite (handbook, from memory)
+    findings = identify(make_sample({"biotite": 60, "chlorite": 40}, FULL, seed=21, exchanges={"biotite": (("fe", 1.1),)}))
+    assert {"phlogopite", "biotite"} <= sheets(findings, "possible")
 
 
 @pytest.mark.parametrize(

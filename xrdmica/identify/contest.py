@@ -12,6 +12,7 @@ from xrdmica.identify.align import align
 from xrdmica.identify.candidates import Hopeful, hopefuls
 from xrdmica.identify.evidence import ledger_for
 from xrdmica.identify.search import KEEP, RARE_FACTOR, Arena, Selection, build_arena, inherited, refined, select, settle, swapped
+from xrdmica.identify.series import SERIES_SAME, blended, siblings
 from xrdmica.identify.strangers import with_strangers
 from xrdmica.matching.linear import tied_fit
 from xrdmica.matching.model import Candidate
@@ -190,21 +191,39 @@ def _one_for_several(arena: Arena, selection: Selection, tries: int = 3) -> tupl
     trials = []
     for place in single:
         near = [a for a in selection.active if a in single and (a == place or _neighbours(arena, a, place))]
-        if len(near) < 2 or (place in near and load_phase(arena.candidates[place].phase).occurrence == "common"):
+        name = arena.candidates[place].phase
+        family = any(siblings(name, arena.candidates[a].phase) for a in near)
+        if len(near) < 2 or (place in near and not family and load_phase(name).occurrence == "common"):
             continue
         rest = [a for a in selection.active if a not in near]
-        lost = tied_fit([s.subset(rest) for s in arena.systems[selection.factor]]).chi_square if rest else float("inf")
+        lost = _chi_square_of(arena, selection, rest)
         active = (*rest, place)
-        rise = _held(arena, active).fit.chi_square - selection.fit.chi_square
+        start = arena if not family else _with_candidate(arena, place, blended(arena, selection, place, near))
+        rise = _held(start, active).fit.chi_square - selection.fit.chi_square
         if rise < _HOPEFUL * (lost - selection.fit.chi_square):
-            trials.append((rise, active))
-    for _, active in sorted(trials)[:tries]:
-        prepared, candidates = refined(arena, _held(arena, active), rounds=6)
+            # two members of a series can always do a little better than one whose composition is only about right
+            allowed = max(KEEP * selection.noise, SERIES_SAME * (lost - selection.fit.chi_square) if family else 0.0)
+            trials.append((rise, active, start, allowed))
+    for _, active, start, allowed in sorted(trials, key=lambda trial: trial[0])[:tries]:
+        prepared, candidates = refined(start, _held(start, active), rounds=6)
         fresh = build_arena(candidates, prepared)
         held = _held(fresh, active)
-        if held.fit.chi_square < selection.fit.chi_square + KEEP * selection.noise:
+        if held.fit.chi_square < selection.fit.chi_square + allowed:
             return _one_for_several(fresh, _among(fresh, active), tries)
     return arena, selection
+
+
+def _chi_square_of(arena: Arena, selection: Selection, active: Sequence[int]) -> float:
+    """Chi-square of some candidates alone; of the background alone without any."""
+    systems = arena.systems[selection.factor]
+    return tied_fit([s.subset(active) for s in systems]).chi_square if active else sum(s.energy for s in systems)
+
+
+def _with_candidate(arena: Arena, place: int, candidate: Candidate) -> Arena:
+    """The arena with one candidate changed."""
+    if candidate == arena.candidates[place]:
+        return arena
+    return build_arena([candidate if i == place else c for i, c in enumerate(arena.candidates)], arena.prepared)
 
 
 def _single_lines(arena: Arena, place: int) -> bool:

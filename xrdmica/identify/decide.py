@@ -13,6 +13,7 @@ from xrdmica.identify.contest import compare, rivals
 from xrdmica.identify.evidence import Ledger, ledger_for
 from xrdmica.identify.next_steps import next_steps
 from xrdmica.identify.search import Arena, Selection
+from xrdmica.identify.series import series_rivals
 from xrdmica.identify.unassigned import unassigned_lines
 from xrdmica.identify.words import absent_reason, fibre_notes, kept_reason, next_measurements, sample_notes
 from xrdmica.matching.prepare import Prepared
@@ -95,6 +96,7 @@ def _kept_finding(arena: Arena, selection: Selection, place: int, labels: Sequen
     convincing = _convincing(ledger, conditions, powder and phase.is_sheet_silicate and selection.noise > _POOR)
     if not convincing:
         common, rare = rivals(arena, selection, place, anywhere=True)
+    common = (*common, *(name for name in series_rivals(arena, selection, place) if name not in common))
     convincing = convincing and (treated or phase.group not in _NEED_TREATMENT)
     status = _status(phase, convincing, common, share)
     alternatives = tuple(
