@@ -9,6 +9,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from xrdmica.chemistry.formula import SiteFormula
+from xrdmica.crystals.building import build_structure, ideal_atoms, ideal_layer, place_atoms
 from xrdmica.crystals.layer import Layer
 from xrdmica.crystals.library import Phase, load_phase, phase_ids
 from xrdmica.crystals.polytype import CellAtoms, library_structure, structured_polytype
@@ -83,12 +84,12 @@ def read_subject(text: str) -> Phase | SiteFormula:
 
 
 def structure_of(subject: str | Phase | SiteFormula, polytype: str | None = None) -> Structure:
-    """The published structure of a library phase."""
+    """The published structure of a library phase, or the ideal one of a formula."""
     if isinstance(subject, str):
         subject = read_subject(subject)
     if isinstance(subject, Phase):
         return library_structure(subject, polytype)
-    raise StructureError("a formula has no published structure", fix="give the id of a library phase")
+    return build_structure(subject, polytype)
 
 
 def cif_of(subject: str | Phase | SiteFormula, polytype: str | None = None) -> str:
@@ -190,7 +191,26 @@ def subject_of(
         subject = read_subject(subject)
     if isinstance(subject, Phase):
         return _of_phase(subject, treatment, mount, radiation, low_d, polytype, model)
-    raise StructureError("patterns of formulas are not calculated", fix="give the id of a library phase")
+    return _of_formula(subject, mount, radiation, low_d, polytype, model)
+
+
+def _of_formula(
+    formula: SiteFormula, mount: Mount, radiation: Radiation, low_d: float, polytype: str | None, model: FormFactors
+) -> Subject:
+    layer = ideal_layer(formula)
+    notes = [f"ideal structure from bond lengths: b {layer.area**0.5 * (2 * 3**0.5) ** 0.5:.3f}, d(001) {layer.spacing:.3f} Å"]
+    if mount == "oriented":
+        if polytype is not None:
+            place_atoms(formula, polytype)  # refuses a polytype that there is not
+            notes.append("the polytype makes no difference to the basal lines of an oriented mount")
+        return Subject(formula.text(), layer=layer, notes=tuple(notes))
+    atoms, ideal = ideal_atoms(formula, polytype)
+    units = ideal.layers * (1 if ideal.polytype in ("3T", "1T") else 2)
+    lines = lines_of_atoms(atoms, ideal.cell, units * formula.molar_mass, radiation, low_d, model=model)
+    notes.append(f"polytype {ideal.polytype}")
+    return Subject(
+        formula.text(), layer=layer, lines=without_basal(lines), layers_per_cell=ideal.layers, notes=tuple(notes)
+    )
 
 
 def _of_phase(

@@ -75,7 +75,7 @@ def command(
         orientation_spread=spread,
         polytype=polytype,
     )
-    _show(pattern, least)
+    # files first: a reader of the table may go away (`| head`)
     if csv_file is not None:
         write_atomically(csv_file, _table(pattern))
     if curve_file is not None:
@@ -88,6 +88,7 @@ def command(
         from xrdmica.calculated.subject import cif_of
 
         write_atomically(cif_file, cif_of(subject, polytype))
+    _show(pattern, least)
 
 
 def _show(pattern: CalculatedPattern, least: float) -> None:
