@@ -78,6 +78,8 @@ def formula_with(phase: Phase, exchanges: Mapping[str, float]) -> SiteFormula:
             raise StructureError(f"{phase.id} has no exchange variable {name!r}", fix="see `xrdmica phases --show`")
         site = formula.site(variable.site)
         change = amount - site.get(variable.into, 0.0)
+        if abs(change) < 1e-12:
+            continue
         out, into = (variable.out, variable.into) if change >= 0 else (variable.into, variable.out)
         if site.get(out, 0.0) < abs(change) - 1e-9:
             raise StructureError(
@@ -85,6 +87,9 @@ def formula_with(phase: Phase, exchanges: Mapping[str, float]) -> SiteFormula:
                 fix=f"keep it between {variable.minimum:g} and {variable.maximum:g}",
             )
         formula = formula.exchanged(variable.site, out, into, abs(change))
+        for other in variable.also:
+            leaves, enters = (other.out, other.into) if change > 0 else (other.into, other.out)
+            formula = formula.exchanged(other.site, leaves, enters, abs(change) * other.ratio)
     return formula
 
 

@@ -137,8 +137,17 @@ class Stack(_Table):
     source: str
 
 
+class Exchange(_Table):
+    """A replacement that goes with another one, to keep charges balanced."""
+
+    site: SiteName
+    out: str
+    into: str
+    ratio: float = Field(default=1.0, gt=0, description="atoms per atom of the first replacement")
+
+
 class Variable(_Table):
-    """What a fit may move."""
+    """What composition or texture may vary in, and a fit may move."""
 
     id: str
     kind: Literal["exchange", "mean_layers"]
@@ -149,6 +158,8 @@ class Variable(_Table):
     site: SiteName | None = None
     out: str | None = None
     into: str | None = None
+    also: tuple[Exchange, ...] = Field(default=(), description="replacements on other sites that go with it")
+    fitted: bool = Field(default=True, description="whether basal intensities tell it, so that a fit may move it")
 
     @model_validator(mode="after")
     def _limits(self) -> Variable:

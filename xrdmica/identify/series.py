@@ -87,7 +87,7 @@ def _iron(candidate: Candidate) -> float:
 
 
 def _solution(phase: Phase) -> Variable | None:
-    return next((v for v in phase.variables if v.kind == "exchange" and v.site == "octahedral"), None)
+    return next((v for v in phase.variables if v.kind == "exchange" and v.fitted and v.site == "octahedral"), None)
 
 
 def _fits_as_well(arena: Arena, selection: Selection, place: int, other: int, variable: Variable) -> bool:

@@ -199,7 +199,7 @@ def _texture_knobs(phase: Phase, component: Component, place: int, scans: tuple[
 def _exchange_knobs(phase: Phase, start: dict[str, float], place: int, scans: tuple[int, ...]) -> list[Knob]:
     knobs = []
     for v in phase.variables:
-        if v.kind != "exchange" or v.maximum <= v.minimum:
+        if v.kind != "exchange" or not v.fitted or v.maximum <= v.minimum:
             continue
         value = float(np.clip(start.get(v.id, v.typical), v.minimum + 1e-3, v.maximum - 1e-3))
         prior = (v.maximum - v.minimum) / 3
