@@ -17,9 +17,11 @@ from pytest_benchmark.fixture import BenchmarkFixture
 from xrdmica.crystals.layer import Layer, build_layer
 from xrdmica.crystals.library import load_phase
 from xrdmica.crystals.polytype import library_structure
-from xrdmica.diffraction.basal import basal_intensity, basal_pattern, lognormal_heights, make_grid, on_scan
+from xrdmica.diffraction.basal import basal_intensity, basal_pattern
+from xrdmica.diffraction.grid import make_grid, on_scan
 from xrdmica.diffraction.optics import Instrument
 from xrdmica.diffraction.powder import powder_lines, powder_pattern
+from xrdmica.diffraction.stack_heights import lognormal_heights
 from xrdmica.diffraction.stacking import stack_intensity, two_kind_junctions
 from xrdmica.radiation import Radiation
 
@@ -73,7 +75,7 @@ def test_the_double_sum_agrees() -> None:
     for number, share in zip(heights.numbers, heights.shares, strict=True):
         places = np.arange(number)
         total += share * np.cos(4 * np.pi * layer.spacing * np.multiply.outer(s, places[:, None] - places)).sum(axis=(1, 2))
-    from xrdmica.diffraction.basal import interference
+    from xrdmica.diffraction.stack_heights import interference
 
     np.testing.assert_allclose(interference(s, layer.spacing, MEAN), total / heights.mean, atol=1e-4 * total.max())
 

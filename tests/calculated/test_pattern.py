@@ -10,7 +10,7 @@ from xrdmica.calculated.subject import lines_of_atoms, read_subject
 from xrdmica.crystals.layer import build_layer
 from xrdmica.crystals.library import Phase, load_phase
 from xrdmica.crystals.polytype import cell_atoms, library_structure, structured_polytype
-from xrdmica.diffraction.basal import make_grid
+from xrdmica.diffraction.grid import make_grid
 from xrdmica.diffraction.optics import RANDOM_SPREAD, Instrument
 from xrdmica.diffraction.powder import powder_lines, reference_pattern
 from xrdmica.errors import XrdmicaError

@@ -9,7 +9,7 @@ import pytest
 
 from xrdmica.crystals.layer import Layer, build_layer
 from xrdmica.crystals.library import load_phase
-from xrdmica.diffraction.basal import PatternGrid, make_grid
+from xrdmica.diffraction.grid import PatternGrid, make_grid
 from xrdmica.diffraction.optics import Instrument
 from xrdmica.radiation import Radiation
 

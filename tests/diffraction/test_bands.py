@@ -8,7 +8,7 @@ import numpy as np
 import pytest
 
 from xrdmica.diffraction.bands import band_intensity, band_profile, flat_layer, rod_families, rod_power
-from xrdmica.diffraction.basal import make_grid
+from xrdmica.diffraction.grid import make_grid
 from xrdmica.diffraction.optics import Instrument
 from xrdmica.diffraction.powder import powder_lines, powder_profile
 from xrdmica.errors import StructureError

@@ -11,19 +11,10 @@ import pytest
 import xraydb
 
 from xrdmica.crystals.layer import Layer
-from xrdmica.diffraction.basal import (
-    PatternGrid,
-    StackHeights,
-    basal_intensity,
-    basal_pattern,
-    interference,
-    layer_amplitude,
-    lognormal_heights,
-    make_grid,
-    on_scan,
-    smooth_amplitude,
-)
+from xrdmica.diffraction.basal import basal_intensity, basal_pattern, layer_amplitude, smooth_amplitude
+from xrdmica.diffraction.grid import PatternGrid, make_grid, on_scan
 from xrdmica.diffraction.optics import Instrument
+from xrdmica.diffraction.stack_heights import StackHeights, interference, lognormal_heights
 from xrdmica.radiation import Radiation
 
 CU = Radiation.parse("Cu")

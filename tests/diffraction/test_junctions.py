@@ -11,7 +11,7 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from xrdmica.crystals.layer import Layer
-from xrdmica.diffraction.basal import PatternGrid, StackHeights, lognormal_heights
+from xrdmica.diffraction.grid import PatternGrid
 from xrdmica.diffraction.junctions import (
     Junctions,
     markov_junctions,
@@ -19,6 +19,7 @@ from xrdmica.diffraction.junctions import (
     random_junctions,
     two_kind_junctions,
 )
+from xrdmica.diffraction.stack_heights import StackHeights, lognormal_heights
 from xrdmica.diffraction.stacking import stack_intensity, stack_interference
 from xrdmica.errors import StructureError
 

@@ -10,8 +10,9 @@ import numpy as np
 import pytest
 
 from xrdmica.crystals.layer import Layer
-from xrdmica.diffraction.basal import basal_intensity, basal_pattern, make_grid, on_scan
+from xrdmica.diffraction.basal import basal_intensity, basal_pattern
 from xrdmica.diffraction.columns import Component, View, component_column
+from xrdmica.diffraction.grid import make_grid, on_scan
 from xrdmica.diffraction.optics import K_BETA, Instrument, axial_nodes, displacement_shift, tube_lines
 from xrdmica.diffraction.powder import powder_lines, powder_profile
 from xrdmica.diffraction.specimen import film_factor, mixture_attenuation, phase_attenuation, transparency_shift

@@ -10,8 +10,9 @@ import pytest
 from xrdmica.crystals.layer import build_layer
 from xrdmica.crystals.library import load_phase
 from xrdmica.crystals.polytype import cell_atoms, library_structure, structured_polytype
-from xrdmica.diffraction.basal import basal_intensity, make_grid, on_scan
+from xrdmica.diffraction.basal import basal_intensity
 from xrdmica.diffraction.columns import Component, View, component_column
+from xrdmica.diffraction.grid import make_grid, on_scan
 from xrdmica.diffraction.optics import RANDOM_SPREAD, Instrument
 from xrdmica.diffraction.powder import (
     collect_lines,

@@ -11,7 +11,9 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from xrdmica.crystals.layer import Layer
-from xrdmica.diffraction.basal import PatternGrid, StackHeights, basal_intensity, interference, lognormal_heights
+from xrdmica.diffraction.basal import basal_intensity
+from xrdmica.diffraction.grid import PatternGrid
+from xrdmica.diffraction.stack_heights import StackHeights, interference, lognormal_heights
 from xrdmica.diffraction.stacking import (
     Junctions,
     random_junctions,

@@ -12,7 +12,7 @@ import pytest
 
 from xrdmica.crystals.layer import build_layer
 from xrdmica.crystals.library import load_phase
-from xrdmica.diffraction.basal import make_grid
+from xrdmica.diffraction.grid import make_grid
 from xrdmica.diffraction.optics import Instrument
 from xrdmica.diffraction.stacking import stack_intensity, two_kind_junctions
 from xrdmica.radiation import Radiation

@@ -11,8 +11,9 @@ from xrdmica.calculated.subject import Subject, subject_of
 from xrdmica.chemistry.formula import SiteFormula
 from xrdmica.crystals.layer import Layer
 from xrdmica.crystals.library import Phase
-from xrdmica.diffraction.basal import PatternGrid, basal_intensity, layer_amplitude, make_grid, on_scan
+from xrdmica.diffraction.basal import basal_intensity, layer_amplitude
 from xrdmica.diffraction.columns import View, component_column
+from xrdmica.diffraction.grid import PatternGrid, make_grid, on_scan
 from xrdmica.diffraction.optics import RANDOM_SPREAD, Instrument, lorentz_factor, mount_factor, polarisation
 from xrdmica.diffraction.powder import Reflections, powder_profile
 from xrdmica.diffraction.scattering import FormFactors

@@ -6,7 +6,7 @@ import csv
 import io
 import json
 from pathlib import Path
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Any
 
 import click
 
@@ -14,6 +14,7 @@ from xrdmica.cli.options import csv_option, file_option, json_option
 
 if TYPE_CHECKING:
     from xrdmica.calculated.pattern import CalculatedPattern
+    from xrdmica.diffraction.scattering import FormFactors
 
 __all__ = ["command"]
 
@@ -35,6 +36,10 @@ __all__ = ["command"]
 @click.option("--polytype", metavar="NAME", help="Polytype, such as 2M1; the usual one when left out.")
 @click.option("--least", type=click.FloatRange(0, 100), default=1.0, show_default=True, metavar="PERCENT",
               help="Weakest line in the table on the screen; files hold all.")
+@click.option(
+    "--form-factors", type=click.Choice(["ionic", "neutral"]), default="ionic", show_default=True,
+    help="Scattering of charged ions or of neutral atoms; the table shows what the other choice would give.",
+)
 @csv_option
 @file_option("--curve", "Write the curve as CSV: two_theta, intensity.")
 @json_option
@@ -51,6 +56,7 @@ def command(
     spread: float,
     polytype: str | None,
     least: float,
+    form_factors: FormFactors,
     csv_file: Path | None,
     curve_file: Path | None,
     json_file: Path | None,
@@ -64,34 +70,36 @@ def command(
     from xrdmica.calculated.pattern import calculate_pattern
     from xrdmica.scans.write import write_atomically
 
-    pattern = calculate_pattern(
-        subject,
-        mount="random" if mount == "random" else "oriented",
-        treatment=treatment,
-        radiation=radiation,
-        two_theta_range=limits,
-        step=step,
-        mean_layers=mean_layers,
-        orientation_spread=spread,
-        polytype=polytype,
-    )
+    chosen: dict[str, Any] = {
+        "mount": "random" if mount == "random" else "oriented", "treatment": treatment, "radiation": radiation,
+        "two_theta_range": limits, "step": step, "mean_layers": mean_layers, "orientation_spread": spread, "polytype": polytype,
+    }  # fmt: skip
+    pattern = calculate_pattern(subject, model=form_factors, **chosen)
+    other = calculate_pattern(subject, model="neutral" if form_factors == "ionic" else "ionic", **chosen)
+    rival = _rival_intensities(pattern, other)
     # files first: a reader of the table may go away (`| head`)
     if csv_file is not None:
-        write_atomically(csv_file, _table(pattern))
+        write_atomically(csv_file, _table(pattern, rival))
     if curve_file is not None:
         write_atomically(curve_file, _curve(pattern))
     if json_file is not None:
-        write_atomically(json_file, _as_json(pattern))
+        write_atomically(json_file, _as_json(pattern, form_factors, rival))
     if figure_file is not None:
         write_atomically(figure_file, _drawn(pattern, figure_file))
     if cif_file is not None:
         from xrdmica.calculated.subject import cif_of
 
         write_atomically(cif_file, cif_of(subject, polytype))
-    _show(pattern, least)
+    _show(pattern, least, form_factors, rival)
 
 
-def _show(pattern: CalculatedPattern, least: float) -> None:
+def _rival_intensities(pattern: CalculatedPattern, other: CalculatedPattern) -> list[float | None]:
+    """Intensity of every line with the other form factors; None for composite lines, which have no indices to compare by."""
+    by_index = {line.hkl: line.intensity for line in other.reflections if line.hkl is not None}
+    return [None if line.hkl is None else by_index.get(line.hkl) for line in pattern.reflections]
+
+
+def _show(pattern: CalculatedPattern, least: float, form_factors: FormFactors, rival: list[float | None]) -> None:
     from rich.box import SIMPLE_HEAD
     from rich.console import Console
     from rich.table import Table
@@ -100,32 +108,35 @@ def _show(pattern: CalculatedPattern, least: float) -> None:
     for note in pattern.notes:
         notes.print(f"{pattern.name}: {note}", markup=False, soft_wrap=True)
     console = Console(highlight=False)
-    shown = [line for line in pattern.reflections if line.intensity >= least]
+    rows = list(zip(pattern.reflections, rival, strict=True))
+    shown = [(line, also) for line, also in rows if line.intensity >= least]
+    unlike = "neutral atoms" if form_factors == "ionic" else "ions"
     tube = pattern.radiation.name
     console.print(
         f"{pattern.name}: {pattern.mount} mount, {pattern.treatment.label}, "
         f"{tube + ' radiation' if tube[0].isalpha() else f'wavelength {tube} Å'}", markup=False, soft_wrap=True,
     )  # fmt: skip
     table = Table(box=SIMPLE_HEAD, padding=(0, 1), pad_edge=False)
-    for head in ("hkl", "d [Å]", "2θ [°]", "intensity", "multiplicity"):
+    for head in ("hkl", "d [Å]", "2θ [°]", "intensity", f"with {unlike}", "multiplicity"):
         table.add_column(head, justify="right", no_wrap=True)
-    for line in shown:
+    for line, also in shown:
         table.add_row(
             line.label or "composite", f"{line.d_spacing:.4f}", f"{line.two_theta:.3f}", f"{line.intensity:.1f}",
-            str(line.multiplicity),
+            "" if also is None else f"{also:.1f}", str(line.multiplicity),
         )  # fmt: skip
     console.print(table)
     if len(shown) < len(pattern.reflections):
         console.print(f"{len(pattern.reflections) - len(shown)} lines below {least:g} not shown", soft_wrap=True)
 
 
-def _table(pattern: CalculatedPattern) -> str:
+def _table(pattern: CalculatedPattern, rival: list[float | None]) -> str:
     stream = io.StringIO()
     writer = csv.writer(stream, lineterminator="\n")
-    writer.writerow(["h", "k", "l", "d_spacing", "two_theta", "intensity", "multiplicity"])
-    for line in pattern.reflections:
+    writer.writerow(["h", "k", "l", "d_spacing", "two_theta", "intensity", "multiplicity", "intensity_other_form_factors"])
+    for line, also in zip(pattern.reflections, rival, strict=True):
         hkl = line.hkl or ("", "", "")
-        writer.writerow([*hkl, f"{line.d_spacing:.5f}", f"{line.two_theta:.4f}", f"{line.intensity:.4f}", line.multiplicity])
+        numbers = [f"{line.d_spacing:.5f}", f"{line.two_theta:.4f}", f"{line.intensity:.4f}", line.multiplicity]
+        writer.writerow([*hkl, *numbers, "" if also is None else f"{also:.4f}"])
     return stream.getvalue()
 
 
@@ -135,13 +146,14 @@ def _curve(pattern: CalculatedPattern) -> str:
     return "\n".join(lines) + "\n"
 
 
-def _as_json(pattern: CalculatedPattern) -> str:
+def _as_json(pattern: CalculatedPattern, form_factors: FormFactors, rival: list[float | None]) -> str:
     record = {
         "name": pattern.name,
         "mount": pattern.mount,
         "treatment": pattern.treatment.name,
         "radiation": pattern.radiation.name,
         "wavelengths": list(pattern.radiation.wavelengths),
+        "form_factors": form_factors,
         "notes": list(pattern.notes),
         "reflections": [
             {
@@ -150,8 +162,9 @@ def _as_json(pattern: CalculatedPattern) -> str:
                 "two_theta": round(line.two_theta, 4),
                 "intensity": round(line.intensity, 4),
                 "multiplicity": line.multiplicity,
+                "intensity_other_form_factors": None if also is None else round(also, 4),
             }
-            for line in pattern.reflections
+            for line, also in zip(pattern.reflections, rival, strict=True)
         ],
         "two_theta": [round(float(x), 4) for x in pattern.two_theta],
         "intensity": [round(float(y), 5) for y in pattern.intensity],

@@ -11,7 +11,7 @@ from numpy.typing import NDArray
 from xrdmica.chemistry.ions import mass_of
 from xrdmica.crystals.library import Phase, Polytype, load_phase
 from xrdmica.crystals.polytype import cell_atoms, structured_polytype
-from xrdmica.diffraction.basal import PatternGrid
+from xrdmica.diffraction.grid import PatternGrid
 from xrdmica.diffraction.optics import mount_factor, polarisation
 from xrdmica.diffraction.scattering import FormFactors, anomalous, form_factor
 from xrdmica.errors import StructureError

@@ -13,7 +13,8 @@ from numpy.typing import NDArray
 from xrdmica.crystals.layer import Layer, build_layer
 from xrdmica.crystals.library import Phase, State, load_phase
 from xrdmica.diffraction.bands import band_intensity
-from xrdmica.diffraction.basal import PatternGrid, Sampling, basal_intensity, on_scan, sample_points
+from xrdmica.diffraction.basal import basal_intensity
+from xrdmica.diffraction.grid import PatternGrid, Sampling, on_scan, sample_points
 from xrdmica.diffraction.optics import RANDOM_SPREAD
 from xrdmica.diffraction.peak_shape import convolve_profile
 from xrdmica.diffraction.powder import Reflections, powder_lines, powder_profile

@@ -8,8 +8,8 @@ from dataclasses import dataclass, field
 import numpy as np
 
 from xrdmica.crystals.library import load_phase
-from xrdmica.diffraction.basal import make_grid
 from xrdmica.diffraction.columns import Component, View, component_column, components_for
+from xrdmica.diffraction.grid import make_grid
 from xrdmica.diffraction.optics import Instrument
 from xrdmica.radiation import Radiation
 from xrdmica.scans.scan import Mount, Scan

@@ -9,7 +9,8 @@ import numpy as np
 from numpy.typing import NDArray
 
 from xrdmica.crystals.layer import Layer
-from xrdmica.diffraction.basal import PatternGrid, StackHeights, layer_amplitude, lognormal_heights, smooth_amplitude
+from xrdmica.diffraction.basal import layer_amplitude, smooth_amplitude
+from xrdmica.diffraction.grid import PatternGrid
 from xrdmica.diffraction.junctions import (
     Junctions,
     markov_junctions,
@@ -18,6 +19,7 @@ from xrdmica.diffraction.junctions import (
     two_kind_junctions,
 )
 from xrdmica.diffraction.scattering import FormFactors
+from xrdmica.diffraction.stack_heights import StackHeights, lognormal_heights
 from xrdmica.errors import StructureError
 from xrdmica.radiation import Radiation
 
@@ -129,6 +131,7 @@ def stack_intensity(
     *,
     mean_layers: float,
     spacing_disorder: float = 0.0,
+    heights: StackHeights | None = None,
     model: FormFactors = "ionic",
 ) -> NDArray[np.float64]:
     """Scattering of unit mass of an interstratified phase, comparable with `basal_intensity`.
@@ -143,6 +146,9 @@ def stack_intensity(
         Mean of the lognormal law.
     spacing_disorder : float
         [angstrom]
+    heights : StackHeights, optional
+        In place of the lognormal law.
+    model : {"ionic", "neutral"}
 
     Returns
     -------
@@ -157,7 +163,7 @@ def stack_intensity(
     s = grid.s[chosen]
     spacings = np.array([layer.spacing for layer in layers])
     areas = np.array([layer.area for layer in layers])
-    heights = lognormal_heights(round(float(mean_layers), 6))
+    heights = lognormal_heights(round(float(mean_layers), 6)) if heights is None else heights
     sides = (False, True) if any(_differs_upside_down(layer, grid.radiation, model) for layer in layers) else (False,)
     total = np.zeros(s.size)
     for upside_down in sides:

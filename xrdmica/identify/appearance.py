@@ -10,8 +10,8 @@ import numpy as np
 from xrdmica.chemistry.oxides import oxide_percent
 from xrdmica.crystals.layer import formula_with
 from xrdmica.crystals.library import Phase, load_phase
-from xrdmica.diffraction.basal import make_grid
 from xrdmica.diffraction.columns import Component, ExpectedLine, View, components_for, cross_lines, expected_lines
+from xrdmica.diffraction.grid import make_grid
 from xrdmica.diffraction.optics import Instrument
 from xrdmica.errors import XrdmicaError
 from xrdmica.radiation import Radiation

@@ -7,8 +7,8 @@ from collections.abc import Sequence
 import numpy as np
 
 from xrdmica.crystals.library import all_phases
-from xrdmica.diffraction.basal import make_grid
 from xrdmica.diffraction.columns import Component, View, components_for, cross_lines, expected_lines
+from xrdmica.diffraction.grid import make_grid
 from xrdmica.diffraction.optics import Instrument
 from xrdmica.identify.unassigned import suggestions
 from xrdmica.scans.peaks import Peak

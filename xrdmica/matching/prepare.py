@@ -7,8 +7,8 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import NDArray
 
-from xrdmica.diffraction.basal import make_grid
 from xrdmica.diffraction.columns import View
+from xrdmica.diffraction.grid import make_grid
 from xrdmica.diffraction.optics import Instrument
 from xrdmica.scans.background import estimate_background
 from xrdmica.scans.peaks import Peak, find_peaks
