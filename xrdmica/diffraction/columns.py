@@ -218,12 +218,12 @@ def component_intensity(component: Component, grid: PatternGrid, model: FormFact
     model : {"ionic", "neutral"}
     """
     layers = component_layers(component)
-    common = {"mean_layers": component.mean_layers, "spacing_disorder": component.disorder}
+    mean, disorder = component.mean_layers, component.disorder
     if component.fraction is None:
-        return basal_intensity(layers[0], grid, model=model, **common)
+        return basal_intensity(layers[0], grid, mean_layers=mean, spacing_disorder=disorder, model=model)
     stack = load_phase(component.phase).stack
     junctions = two_kind_junctions(component.fraction, stack.reichweite if stack else 0)
-    return stack_intensity(layers, junctions, grid, model=model, **common)
+    return stack_intensity(layers, junctions, grid, mean_layers=mean, spacing_disorder=disorder, model=model)
 
 
 @lru_cache(maxsize=256)
