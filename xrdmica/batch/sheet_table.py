@@ -26,6 +26,7 @@ _MOUNTS: dict[str, Mount] = {
 # columns that hold one number per sample, with their least and largest value
 _NUMBERS: dict[str, tuple[float, float]] = {
     "clay_percent": (0.0, 100.0), "standard_percent": (0.0, 100.0), "depth_m": (-12000.0, 12000.0), "mass_mg_cm2": (0.0, 1e4),
+    "liquid_limit": (0.0, 1000.0), "plastic_limit": (0.0, 1000.0), "methylene_blue": (0.0, 1000.0), "cec": (0.0, 300.0),
 }  # fmt: skip
 # columns with a fixed choice of words
 _CHOICES: dict[str, tuple[str, ...]] = {"angle_scale": ANGLE_SCALES}

@@ -18,6 +18,9 @@ __all__ = ["command"]
 @options.outside_option
 @options.phase_option
 @options.instrument_option
+@options.calibration_option
+@options.formula_option
+@options.joint_option
 @options.json_option
 @options.csv_option
 @options.figure_option
@@ -30,6 +33,9 @@ def command(
     allow_outside: bool,
     phases: tuple[str, ...],
     instrument: str | None,
+    width_calibration: str | None,
+    formulas: tuple[tuple[str, str], ...],
+    joint_chemistry: bool,
     json_file: Path | None,
     csv_file: Path | None,
     figure_file: Path | None,
@@ -49,7 +55,10 @@ def command(
     entries = entries_of(paths, radiation=radiation, sample=sample, allow_outside=allow_outside)
     if figure_file is not None and len(entries) > 1:
         raise click.UsageError("--figure draws one sample: choose it with --sample, or use `xrdmica batch` for all.")
-    settings = options.settings_from(radiation, phases, instrument, curves=figure_file is not None or json_file is not None)
+    settings = options.settings_from(
+        radiation, phases, instrument, curves=figure_file is not None or json_file is not None,
+        width_calibration=width_calibration, formulas=formulas, joint_chemistry=joint_chemistry,
+    )  # fmt: skip
     results, failed = of_each(entries, lambda scans: analyse_sample(scans, settings))
     # files first: a reader of the table may go away (`| head`)
     if json_file is not None:

@@ -31,6 +31,8 @@ COMMANDS: dict[str, LazyCommand] = {
     "peaks": LazyCommand("xrdmica.cli.peaks", "Lines of scans with positions, widths and their errors."),
     "identify": LazyCommand("xrdmica.cli.identify", "Which phases are in a sample, with the evidence for each."),
     "estimate": LazyCommand("xrdmica.cli.estimate", "Proportions with intervals, and whether the sample swells."),
+    "screen": LazyCommand("xrdmica.cli.screen", "Does this soil swell? Class, expected CEC and surface, index tests, hazards."),
+    "profile": LazyCommand("xrdmica.cli.profile", "Proportions against depth or another coordinate, as figure and table."),
     "trial": LazyCommand("xrdmica.cli.trial", "How well would this work for my kind of sample? Simulated samples."),
     "batch": LazyCommand("xrdmica.cli.batch", "All samples of a sheet or folder, with tables and figures."),
 }

@@ -14,7 +14,8 @@ if TYPE_CHECKING:
     from xrdmica.batch.analyse import Settings
 
 __all__ = [
-    "csv_option", "figure_option", "file_option", "instrument_option", "json_of", "json_option", "outside_option",
+    "calibration_option", "csv_option", "figure_option", "file_option", "formula_option", "instrument_option", "joint_option",
+    "json_of", "json_option", "outside_option",
     "paths_argument", "phase_option", "radiation_option", "sample_option", "settings_from", "workers_option",
 ]  # fmt: skip
 
@@ -100,13 +101,51 @@ def paths_argument(command: Command) -> Command:
     return click.argument("paths", metavar="PATH...", nargs=-1, required=True)(command)
 
 
+def calibration_option(command: Command) -> Command:
+    """``--width-calibration``: the laboratory's line for width indices."""
+    return click.option(
+        "--width-calibration", type=click.Path(exists=True, dir_okay=False), metavar="FILE",
+        help="Calibration of width indices: TOML with slope and intercept, or CSV of standards (measured, reference).",
+    )(command)  # fmt: skip
+
+
+def formula_option(command: Command) -> Command:
+    """``--formula``: known mineral formulas."""
+    return click.option(
+        "--formula", "formulas", metavar="PHASE=FORMULA", multiple=True, callback=_formulas,
+        help="Mineral formula known otherwise, such as \"biotite=K(Mg1.5Fe2+1.5)(Si3Al)O10(OH)2\"; may be given several times.",
+    )(command)  # fmt: skip
+
+
+def joint_option(command: Command) -> Command:
+    """``--joint-chemistry``: weights from scans and analysis together."""
+    return click.option(
+        "--joint-chemistry", is_flag=True, help="With an analysis (sheet column chemistry): weights that both support."
+    )(command)
+
+
+def _formulas(ctx: click.Context, parameter: click.Parameter, value: tuple[str, ...]) -> tuple[tuple[str, str], ...]:
+    out = []
+    for text in value:
+        phase, equals, formula = text.partition("=")
+        if not equals:
+            raise click.BadParameter(f"{text!r} is not PHASE=FORMULA.")
+        from xrdmica.chemistry.formula import SiteFormula
+        from xrdmica.crystals.layer import exchanges_of
+        from xrdmica.crystals.library import load_phase
+
+        exchanges_of(load_phase(phase.strip()), SiteFormula.parse(formula))
+        out.append((phase.strip(), formula.strip()))
+    return tuple(out)
+
+
 def settings_from(
-    radiation: str | None, phases: Sequence[str] = (), instrument: str | None = None, *, curves: bool = True
+    radiation: str | None, phases: Sequence[str] = (), instrument: str | None = None, *, curves: bool = True, **more: Any
 ) -> Settings:
     """The settings that the options stand for."""
     from xrdmica.batch.analyse import Settings
 
-    return Settings(radiation=radiation, phases=tuple(phases), instrument=instrument, curves=curves)
+    return Settings(radiation=radiation, phases=tuple(phases), instrument=instrument, curves=curves, **more)
 
 
 def json_of(texts: Sequence[str], *, single: bool) -> str:

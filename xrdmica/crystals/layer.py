@@ -13,7 +13,7 @@ from xrdmica.chemistry.formula import SiteFormula
 from xrdmica.crystals.library import Phase, Plane, State
 from xrdmica.errors import StructureError
 
-__all__ = ["Layer", "build_layer", "formula_with"]
+__all__ = ["Layer", "build_layer", "exchanges_of", "formula_with"]
 
 
 @dataclass(frozen=True, eq=False)
@@ -91,6 +91,32 @@ def formula_with(phase: Phase, exchanges: Mapping[str, float]) -> SiteFormula:
             leaves, enters = (other.out, other.into) if change > 0 else (other.into, other.out)
             formula = formula.exchanged(other.site, leaves, enters, abs(change) * other.ratio)
     return formula
+
+
+def exchanges_of(phase: Phase, formula: SiteFormula) -> dict[str, float]:
+    """Values of a phase's exchange variables that come nearest to a known formula.
+
+    Parameters
+    ----------
+    phase : Phase
+    formula : SiteFormula
+        Of the same layer type.
+
+    Raises
+    ------
+    StructureError
+        If the formula has another layer type than the phase.
+    """
+    if formula.layer_type != phase.layer_type:
+        raise StructureError(
+            f"{phase.id}: the formula given has a {formula.layer_type} layer, not {phase.layer_type}", fix="give one of it"
+        )
+    out = {}
+    for variable in phase.variables:
+        if variable.kind == "exchange" and variable.site is not None and variable.into is not None:
+            amount = formula.site(variable.site).get(variable.into, 0.0)
+            out[variable.id] = min(max(amount, variable.minimum), variable.maximum)
+    return out
 
 
 def build_layer(

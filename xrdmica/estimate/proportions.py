@@ -2,12 +2,14 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
-from dataclasses import dataclass
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
 
+from xrdmica.chemistry.formula import SiteFormula
+from xrdmica.crystals.layer import exchanges_of
 from xrdmica.crystals.library import load_phase
 from xrdmica.diffraction.columns import components_for
 from xrdmica.diffraction.optics import Instrument
@@ -66,13 +68,24 @@ def _basis(sample: Sample) -> Basis:
     return "sheet silicates of the oriented mount" if oriented else "crystalline part"
 
 
-def _fit(examination: Examination) -> Fitted | None:
+def _fit(examination: Examination, known: Mapping[str, SiteFormula]) -> Fitted | None:
     arena, selection = examination.arena, examination.selection
     if not selection.active:
         return None
     start = [item.spread(item.view.orientation_spread * selection.factor) for item in arena.prepared]
     chosen = [arena.candidates[a] for a in selection.active]
-    return fit_model(build_model(start, chosen, exchanges=composition_shows(chosen)))
+    chosen = [_with_formula(one, known[one.phase]) if one.phase in known else one for one in chosen]
+    return fit_model(build_model(start, chosen, exchanges=composition_shows(chosen), known=tuple(known)))
+
+
+def _with_formula(candidate: Candidate, formula: SiteFormula) -> Candidate:
+    """The candidate with the composition of a known mineral formula."""
+    exchanges = tuple(exchanges_of(load_phase(candidate.phase), formula).items())
+    components = tuple(
+        one if one is None or not one.states or one.fraction is not None else replace(one, exchanges=exchanges)
+        for one in candidate.components
+    )
+    return replace(candidate, components=components)
 
 
 def _parameters(fitted: Fitted, errors: FloatArray) -> tuple[FittedParameter, ...]:
@@ -275,20 +288,22 @@ def _nothing(examination: Examination, basis: Basis) -> Estimate:
     return Estimate(proportions, bare_curves(prepared), None, tuple(None for _ in prepared))
 
 
-def estimate_examined(examination: Examination) -> Estimate:
+def estimate_examined(examination: Examination, known: Mapping[str, SiteFormula] | None = None) -> Estimate:
     """Fit all scans of an examined sample together and report proportions.
 
     Parameters
     ----------
     examination : Examination
         From `xrdmica.identify.decide.examine`.
+    known : mapping, optional
+        Phase id -> mineral formula known otherwise (microprobe); the fit keeps to it.
 
     Returns
     -------
     Estimate
     """
     basis = _basis(examination.sample)
-    fitted = _fit(examination)
+    fitted = _fit(examination, known or {})
     if fitted is None:
         return _nothing(examination, basis)
     names = [c.phase for c in fitted.model.candidates]
@@ -300,8 +315,8 @@ def estimate_examined(examination: Examination) -> Estimate:
     curves = fitted_curves(fitted)
     strange = _strange_share(curves)
     poor = strange > _STRANGE_LIMIT or fitted.reduced_chi_square > _POOR_FIT
-    known = bool(counted) and not (basis == "crystalline part" and poor)
-    shares = normalise(fitted.evaluation.amounts, amount_covariance, counted) if known else None
+    weighable = bool(counted) and not (basis == "crystalline part" and poor)
+    shares = normalise(fitted.evaluation.amounts, amount_covariance, counted) if weighable else None
     covariance = np.zeros((0, 0))
     rows: tuple[PhaseWeight, ...]
     outside = _outsiders(examination)

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Collection, Sequence
 from dataclasses import dataclass, replace
 
 import numpy as np
@@ -220,6 +220,7 @@ def build_model(
     *,
     movable: Sequence[int] | None = None,
     exchanges: bool = False,
+    known: Collection[str] = (),
 ) -> SampleModel:
     """Set up the parameters of a sample.
 
@@ -232,6 +233,8 @@ def build_model(
         Candidates whose own parameters may move; all when left out.
     exchanges : bool
         Whether exchange variables (iron content ...) move too.
+    known : collection of str
+        Phases whose composition is known and stays.
 
     Returns
     -------
@@ -251,7 +254,7 @@ def build_model(
             Knob(f"displacement_s{k}", "displacement", value, -DISPLACEMENT_LIMIT, DISPLACEMENT_LIMIT, 0.15, 0.0, -1, (k,))
         )
     for place in range(len(candidates)) if movable is None else movable:
-        knobs += _phase_knobs(candidates[place], place, exchanges)
+        knobs += _phase_knobs(candidates[place], place, exchanges and candidates[place].phase not in known)
     return SampleModel(tuple(prepared), tuple(candidates), tuple(knobs))
 
 

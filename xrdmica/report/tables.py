@@ -127,6 +127,8 @@ def result_table(result: SampleResult, console: Console) -> None:
     _scans(result.scans, console)
     _weights(result, console)
     _alternatives(result.findings, console)
+    _indices(result, console)
+    _chemistry(result, console)
     _unassigned(result.findings, console)
     _measure_next(result.findings, console)
     _list(console, "Notes", (n for n in all_notes(result) if not n.startswith("radiation assumed for")))
@@ -265,6 +267,36 @@ def evidence_table(
         _section(console, "Not detected", table)
     _measure_next(findings, console)
     _list(console, "Notes", findings.notes)
+
+
+def _indices(result: SampleResult, console: Console) -> None:
+    """Indices that could be computed; the reasons for the others are in the JSON."""
+    there = [index for index in result.indices if index.value is not None]
+    if not there:
+        return
+    table = _table(("Index", "left"), ("value", "right"), ("error", "right"), ("unit", "left"), ("scan", "left"), wide="Index")
+    for index in there:
+        error = "" if index.standard_error is None else f"{index.standard_error:.3g}"
+        _add(table, index.name, f"{index.value:.3g}", error, index.unit, index.scan)
+    _section(console, "Indices (definitions, sources and weaknesses in the JSON)", table)
+
+
+def _chemistry(result: SampleResult, console: Console) -> None:
+    check = result.chemistry
+    if check is None:
+        return
+    table = _table(("Oxide", "left"), ("measured", "right"), ("implied", "right"), ("95 % range", "right"), ("sigma", "right"))
+    for row in check.oxides:
+        span = "" if row.implied_low is None else f"{row.implied_low:.1f} – {row.implied_high:.1f}"
+        far = "" if row.misfit_sigma is None else f"{row.misfit_sigma:+.1f}"
+        _add(table, row.oxide, f"{row.measured:.2f}", f"{row.implied:.2f}", span, far)
+    _section(console, f"Analysis: {plain(check.text)}", table)
+    _list(console, "What would reconcile them", check.reconcile)
+    if check.joint:
+        _list(console, "Scans and analysis together", (
+            f"{row.name}: {row.weight_percent:.1f} % ({row.low95:.1f} – {row.high95:.1f})" for row in check.joint
+            if row.weight_percent is not None
+        ))  # fmt: skip
 
 
 def _measure_next(findings: Findings, console: Console) -> None:
