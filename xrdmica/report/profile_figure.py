@@ -40,8 +40,8 @@ def profile_figure(points: Sequence[ProfilePoint], along: str) -> Figure:
         x = [p.weight or 0.0 for p in own]
         left = [max((p.weight or 0.0) - (p.low if p.low is not None else p.weight or 0.0), 0.0) for p in own]
         right = [max((p.high if p.high is not None else p.weight or 0.0) - (p.weight or 0.0), 0.0) for p in own]
-        style = "o-" if depth else "o"
-        panel.errorbar(x, y, xerr=[left, right], fmt=style, color="#1f4e79", ecolor="#7a8a99", lw=1, ms=4, capsize=2)
+        # no line between the points: samples in which the phase was not found lie between them
+        panel.errorbar(x, y, xerr=[left, right], fmt="o", color="#1f4e79", ecolor="#7a8a99", lw=1, ms=4, capsize=2)
         panel.set_title(_short(name), fontsize=8)
         panel.set_xlim(0, max([*(p.high or 0.0 for p in own), 10.0]) * 1.08)
         panel.grid(True, lw=0.3, color="#c8ccd0")
