@@ -59,7 +59,7 @@ def test_options_reach_the_run(tmp_path: Path) -> None:
     record = json.loads((tmp_path / "out" / "run.json").read_text())
     assert record["settings"]["radiation"] == "Co"
     assert record["settings"]["phases"] == ["illite"]
-    assert record["sheet"] == "sheet.csv"
+    assert record["sheets"] == ["sheet.csv"]
     assert not (tmp_path / "out" / "S1.png").exists()
 
 

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import ctypes
 import os
 import time
 from dataclasses import dataclass, replace
@@ -51,6 +52,13 @@ def analyse(sample: Sample, settings: FakeSettings) -> SampleResult:
         os._exit(7)
     if "slow" in sample.name:
         time.sleep(0.3)
+    if "segfault" in sample.name:
+        ctypes.string_at(0)
+    if "hang" in sample.name:
+        time.sleep(3600)
+    if "spin" in sample.name:
+        while True:
+            pass
     result = build_result(sample.name, curves=settings.curves, points=60)
     return result.model_copy(update={"curves": result.curves[:1]})
 
@@ -66,6 +74,10 @@ def load_and_analyse(entry: FakeEntry) -> SampleResult:
 
 def double(value: int) -> int:
     return 2 * value
+
+
+def process_id(value: int) -> int:
+    return os.getpid()
 
 
 def die_once(marker: str) -> str:
