@@ -17,6 +17,7 @@ __all__ = ["DaskExecutor"]
 Item = TypeVar("Item")
 Result = TypeVar("Result")
 
+_REACH = 15.0  # seconds to wait for the scheduler
 _JOIN = 60.0  # seconds to wait for the first worker
 _END: Any = object()
 
@@ -95,7 +96,7 @@ class DaskExecutor:
             from xrdmica.batch.executors import available_cores
 
             count = self.workers or available_cores()
-            options = {"threads_per_worker": 1, "dashboard_address": None, "silence_logs": 50}
+            options = {"threads_per_worker": 1, "dashboard_address": ":0", "silence_logs": 50}
             with (
                 distributed.LocalCluster(n_workers=count, **options) as cluster,
                 distributed.Client(cluster) as client,
@@ -103,7 +104,7 @@ class DaskExecutor:
                 yield client
             return
         try:
-            client = distributed.Client(self.scheduler, timeout=15)
+            client = distributed.Client(self.scheduler, timeout=_REACH)
         except (OSError, ValueError) as error:
             reason = " ".join(str(error).split())
             raise XrdmicaError(

@@ -5,7 +5,7 @@ from __future__ import annotations
 import sys
 import time
 from collections.abc import Callable, Iterator
-from contextlib import contextmanager
+from contextlib import contextmanager, suppress
 from typing import TYPE_CHECKING
 
 import click
@@ -85,9 +85,15 @@ def show_progress(quiet: bool) -> Iterator[Callable[[Progress], None]]:
 
 
 def _line(progress: Progress, pace: Pace, quiet: bool) -> None:
+    words = pace.words(progress)
+    # a reader that went away must not end a run of many hours
+    with suppress(OSError):
+        _tell(progress, words, quiet)
+
+
+def _tell(progress: Progress, words: str, quiet: bool) -> None:
     from xrdmica.report.tables import plain
 
-    words = pace.words(progress)
     place = f"[{progress.done}/{progress.total}] {plain(progress.sample)}"
     if progress.reason is not None:
         kind = "FAILED" if not progress.finished else "INCOMPLETE"

@@ -25,6 +25,7 @@ CORNERS: tuple[tuple[str, frozenset[str]], ...] = (
     ("mica and illite", frozenset({"true mica", "brittle mica"})),
     ("kaolin, serpentine, chlorite", frozenset({"kaolin", "serpentine", "chlorite"})),
 )
+_ALL_NAMED = 15  # points; among more only those that stand apart are named
 _LEAST = 20.0  # wt % that the three corners must have together for a point to mean something
 _COLOURS = (
     "#1d4f91", "#e07b1a", "#12827c", "#8f2d1b", "#5b3a86", "#a88a00", "#b04a8f", "#6a6f76", "#6f9fd8", "#f0b27a", "#7fc4bf",
@@ -95,7 +96,8 @@ def stacked_figure(campaign: Campaign) -> tuple[Figure, str] | None:
         caption = f"Mean proportions, wt %, of the groups of similar samples among {len(rows)} samples"
     order = _by_weight([phases for _, phases in bars])
     named = order[:_MOST_PHASES]
-    figure = _new_figure(max(6.0, min(24.0, 2.8 + 0.26 * len(bars))), 5.2)
+    width = max(7.0, min(24.0, 3.8 + 0.26 * len(bars)))
+    figure = _new_figure(width, 5.2)
     axes = figure.add_subplot()
     places = list(range(len(bars)))
     base = [0.0] * len(bars)
@@ -117,7 +119,7 @@ def stacked_figure(campaign: Campaign) -> tuple[Figure, str] | None:
     for text in legend.get_texts():
         text.set_parse_math(False)
     _quiet(axes)
-    figure.subplots_adjust(left=0.9 / figure.get_figwidth(), right=1 - 1.9 / figure.get_figwidth(), top=0.96, bottom=0.28)
+    figure.subplots_adjust(left=0.8 / width, right=1 - 2.7 / width, top=0.96, bottom=0.31)
     return figure, caption
 
 
@@ -180,7 +182,8 @@ def ternary_figure(campaign: Campaign) -> tuple[Figure, str] | None:
             color=_COLOURS[(number - 1) % len(_COLOURS)] if number else _FAINT, marker=_MARKERS[(number - 1) % len(_MARKERS)],
             edgecolors="white", linewidths=0.4, zorder=3, label=f"group {number}, n = {len(inside)}",
         )  # fmt: skip
-    marked = [(row, shares) for row, shares in points if "unlike the others" in row.flags][:20]
+    few = len(points) <= _ALL_NAMED
+    marked = [(row, shares) for row, shares in points if few or "unlike the others" in row.flags][:20]
     for row, shares in marked:
         axes.annotate(_short(row.sample), _place(shares), xytext=(4, 4), textcoords="offset points", fontsize=7, color=_INK,
                       parse_math=False)  # fmt: skip

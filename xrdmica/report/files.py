@@ -148,7 +148,8 @@ def plan_stems(samples: Sequence[str], folder: Path | None = None) -> dict[str, 
     for sample, stem in plain.items():
         rivals.setdefault(stem.casefold(), []).append(sample)
     files = folder.glob("*.json") if folder is not None and folder.is_dir() else ()
-    taken = {path.stem.casefold(): path for path in files}
+    # an empty file is what a power cut may leave: it belongs to nobody
+    taken = {path.stem.casefold(): path for path in files if path.stat().st_size}
     out = {}
     for sample, stem in plain.items():
         key = stem.casefold()
