@@ -14,7 +14,7 @@ Array = NDArray[np.float64]
 
 LARGEST = 2000  # samples whose distances to each other are all held in memory
 _MOST_GROUPS = 8
-_STRUCTURE = 0.26  # average silhouette below which Kaufman and Rousseeuw speak of no substantial structure
+_STRUCTURE = 0.51  # average silhouette from which Kaufman and Rousseeuw speak of a reasonable structure
 _MODIFIED_Z = 3.5  # limit that Iglewicz and Hoaglin give
 _NOTABLE = 0.1  # Hellinger distance; smaller ones are within what proportions are uncertain by, common practice
 
@@ -60,7 +60,7 @@ def group_similar(proportions: Sequence[Mapping[str, float]]) -> Grouping:
     ----------
     P. Legendre and E. D. Gallagher, Oecologia 129 (2001) 271-280 (Hellinger distance before Euclidean methods).
     J. H. Ward, Journal of the American Statistical Association 58 (1963) 236-244.
-    P. J. Rousseeuw, Journal of Computational and Applied Mathematics 20 (1987) 53-65 (silhouette); limit 0.26 from
+    P. J. Rousseeuw, Journal of Computational and Applied Mathematics 20 (1987) 53-65 (silhouette); limit 0.51 from
     L. Kaufman and P. J. Rousseeuw, Finding Groups in Data (1990), from memory.
     B. Iglewicz and D. C. Hoaglin, How to Detect and Handle Outliers (1993), from memory.
     """
