@@ -55,36 +55,33 @@ def reference(tmp_path_factory: pytest.TempPathFactory) -> dict[str, bytes]:
     return files
 
 
-def test_killed_twenty_times(tmp_path: Path, reference: dict[str, bytes]) -> None:
-    """SIGKILL at random moments, in one process and in workers, also over results of other settings."""
-    chance = random.Random(20)
-    needed = {}
-    for workers in (0, 2):
-        begin = time.monotonic()
-        complete(tmp_path / f"timed{workers}", workers, "report=1")
-        needed[workers] = time.monotonic() - begin
-    kills = rounds = 0
-    reached = []
-    while kills < 24:
-        out = tmp_path / f"out{rounds}"
-        workers, stale = (0, 2)[rounds % 2], rounds % 4 >= 2
-        if stale:
-            complete(out, 0, "report=1", "shade=3")
-        rounds += 1
-        assert rounds < 20
-        for _ in range(8):
-            run = start(out, workers, "report=1")
-            try:
-                run.communicate(timeout=chance.uniform(0.2, 1.0) * needed[workers])
-            except subprocess.TimeoutExpired:
-                run.kill()
-                run.communicate()
-                kills += 1
-                if not stale:
-                    reached.append(len(list(out.glob("*.json"))))
-        complete(out, workers, "report=1")
-        assert snapshot(out) == reference
-    assert any(0 < count < COUNT - 8 for count in reached), "no kill fell into the middle of a run"
+@pytest.mark.parametrize("stale", [False, True])
+@pytest.mark.parametrize("workers", [0, 2])
+def test_killed_at_random_moments(tmp_path: Path, reference: dict[str, bytes], workers: int, stale: bool) -> None:
+    """SIGKILL seven times on the way (28 times in all), in one process and with workers, also over results of other settings:
+    while the program starts, while samples come and are written, and while tables and figures are made."""
+    chance = random.Random(f"{workers} {stale}")
+    out = tmp_path / "out"
+    if stale:
+        complete(out, 0, "report=1", "shade=3")
+    finished = sum(b'"status": "done"' in line for line in reference["run.json"].splitlines())
+    lines = killed = 0
+    for moment in range(7):
+        run = start(out, workers, "report=1")
+        assert run.stdout is not None
+        if moment in (5, 6):  # after the last sample
+            lines, delay = finished, chance.uniform(0.0, 0.4)
+        else:
+            lines, delay = min(lines + chance.randrange(moment > 0, 9), finished - 2), chance.uniform(0.0, 0.02)
+        for _ in range(lines):
+            run.stdout.readline()
+        time.sleep(delay if lines else chance.uniform(0.0, 0.5))
+        run.kill()
+        killed += run.wait() == -signal.SIGKILL  # a quick machine may have come to the end before
+        run.communicate()
+    assert killed >= 5
+    complete(out, workers, "report=1")
+    assert snapshot(out) == reference
 
 
 def test_orphans_end_at_once(tmp_path: Path) -> None:

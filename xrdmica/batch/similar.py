@@ -12,7 +12,7 @@ __all__ = ["Grouping", "group_similar"]
 
 Array = NDArray[np.float64]
 
-LARGEST = 2000  # samples whose distances to each other are all held in memory
+LARGEST = 1000  # samples whose distances to each other are all held in memory
 _MOST_GROUPS = 8
 _STRUCTURE = 0.51  # average silhouette from which Kaufman and Rousseeuw speak of a reasonable structure
 _MODIFIED_Z = 3.5  # limit that Iglewicz and Hoaglin give
@@ -44,7 +44,7 @@ def group_similar(proportions: Sequence[Mapping[str, float]]) -> Grouping:
     Proportions are turned into square roots of fractions, so that distances are Hellinger distances, for which absent
     phases need no invented value; the tree is Ward's, cut where the average silhouette is largest, or not at all when no
     cut is convincing. A sample stands apart when it is a group by itself, or when its distance from the middle of its
-    group is extreme by the modified z-score. Beyond 2000 samples the tree is that of evenly spaced samples, and each
+    group is extreme by the modified z-score. Beyond 1000 samples the tree is that of evenly spaced samples, and each
     other sample joins the nearest group.
 
     Parameters
