@@ -8,6 +8,7 @@ from dataclasses import dataclass, field
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
+from xrdmica._version import __version__
 from xrdmica.batch.executors import Executor, executor_for
 from xrdmica.batch.lock import locked, refuse_if_locked
 from xrdmica.batch.record import write_record
@@ -329,6 +330,11 @@ def _settle(plan: _Plan, task: _Task, outcome: Outcome | Exception, script: list
         task.reason = " ".join(str(outcome).split())
         withdraw(plan.out, task.stem, task.entry.name)
         return
+    if outcome.version != __version__:
+        raise XrdmicaError(
+            f"a worker has version {outcome.version} of this program, here it is {__version__}",
+            fix="install the same version everywhere",
+        )
     for name, content in outcome.shared.items():
         write_bytes(plan.out / name, content)
         script[0] = False

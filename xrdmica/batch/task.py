@@ -8,6 +8,7 @@ from dataclasses import dataclass, field
 from pathlib import Path
 from typing import TYPE_CHECKING
 
+from xrdmica._version import __version__
 from xrdmica.batch.resume import FINGERPRINT
 from xrdmica.report.files import result_text
 from xrdmica.results import SampleResult
@@ -67,11 +68,14 @@ class Outcome:
         Name -> content of files that all pages share.
     problem : str or None
         Why a figure or page is wanting though the result is complete.
+    version : str
+        Of this program where the work was done.
     """
 
     files: dict[str, bytes]
     shared: dict[str, bytes] = field(default_factory=dict)
     problem: str | None = None
+    version: str = __version__
 
 
 def work(job: Job) -> Outcome:
@@ -101,7 +105,7 @@ def work(job: Job) -> Outcome:
         except Exception as error:
             problems.append(f"its page could not be written: {error}")
     problem = f"the result is complete, but {' and '.join(problems)}" if problems else None
-    return Outcome(files, shared, problem)
+    return Outcome(files, shared, problem, __version__)
 
 
 def _figure(result: SampleResult) -> bytes:

@@ -63,7 +63,8 @@ def command(
     if not quiet:
         _print_table(results, out, len(found))
     if last is not None and (last.failed or (out / "failures.csv").exists()):
-        click.echo(f"xrdmica: {last.failed} of {last.total} samples failed, reasons in {out / 'failures.csv'}", err=True)
+        what = f"{last.failed} of {last.total} samples failed" if last.failed else "figures or pages are wanting"
+        click.echo(f"xrdmica: {what}, reasons in {out / 'failures.csv'}", err=True)
         ctx.exit(1)
 
 
