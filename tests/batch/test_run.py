@@ -40,6 +40,7 @@ def test_files_of_a_batch(tmp_path: Path) -> None:
     results = list(go(entries, tmp_path / "out", figures=True))
     assert [r.sample for r in results] == ["S2", "S1"]
     names = {"S1.json", "S1.png", "S2.json", "S2.png", "proportions.csv", "groups.csv", "summary.csv", "run.json"}
+    names |= {"indices.csv", "proportions_wide.csv", "proportions.svg", "ternary.svg"}
     assert set(snapshot(tmp_path / "out")) == names
     assert read_result(tmp_path / "out" / "S1.json").curves
     rows = table(tmp_path / "out" / "proportions.csv")
@@ -53,7 +54,7 @@ def test_results_are_written_as_they_come(tmp_path: Path) -> None:
     results = go([FakeEntry("S1"), FakeEntry("S2")], tmp_path)
     assert not list(tmp_path.iterdir())
     next(results)
-    assert set(snapshot(tmp_path)) == {"S1.json"}
+    assert set(snapshot(tmp_path)) == {"S1.json", ".xrdmica-lock"}
     list(results)
     assert "summary.csv" in snapshot(tmp_path)
 
@@ -77,7 +78,7 @@ def test_bad_samples_are_reported_and_the_others_finish(tmp_path: Path, workers:
 
 def test_number_of_workers_changes_nothing(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
     # somebody may be editing phase files meanwhile
-    monkeypatch.setattr("xrdmica.batch.run._structures_fingerprint", lambda: None)
+    monkeypatch.setattr("xrdmica.batch.resume.structures_digest", lambda: None)
     entries = [FakeEntry(n) for n in ("slow", "S1", "bad", "S2", "عينة", "a/b")]
     for workers in (1, 2):
         list(go(entries, tmp_path / str(workers), workers=workers, figures=True))

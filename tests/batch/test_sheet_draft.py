@@ -57,3 +57,17 @@ def test_folder_without_scans(tmp_path: Path) -> None:
         write_sheet(tmp_path)
     with pytest.raises(SheetError, match="cannot be read"):
         write_sheet(tmp_path / "none")
+
+
+def test_a_sheet_elsewhere_names_files_as_seen_from_there(tmp_path: Path) -> None:
+    from xrdmica.batch.sheet import read_sheet
+
+    scans = tmp_path / "scans"
+    scans.mkdir()
+    (scans / "S1_AD.xy").write_text(table())
+    sheet = write_sheet(scans, tmp_path / "sheet.csv")
+    assert sheet == tmp_path / "sheet.csv"
+    (entry,) = read_sheet(sheet, radiation="Cu")
+    assert entry.rows[0].path.resolve() == (scans / "S1_AD.xy").resolve()
+    with pytest.raises(SheetError, match="there is a file of this name already"):
+        write_sheet(scans, sheet)

@@ -49,7 +49,7 @@ def test_all_well(tmp_path: Path) -> None:
     assert "screening result" in words
     assert words.count("The swelling verdict is a screening result.") == 1
     assert str(tmp_path / "out") in words
-    assert result.stderr.splitlines() == ["[1/2] S1", "[2/2] S2"]
+    assert [line.split(" (")[0] for line in result.stderr.splitlines()] == ["[1/2] S1", "[2/2] S2"]
     assert (tmp_path / "out" / "S1.png").exists()
 
 
@@ -59,7 +59,7 @@ def test_options_reach_the_run(tmp_path: Path) -> None:
     record = json.loads((tmp_path / "out" / "run.json").read_text())
     assert record["settings"]["radiation"] == "Co"
     assert record["settings"]["phases"] == ["illite"]
-    assert record["sheet"] == "sheet.csv"
+    assert record["sheets"] == ["sheet.csv"]
     assert not (tmp_path / "out" / "S1.png").exists()
 
 
@@ -153,3 +153,124 @@ def test_files_outside_the_folder_of_the_sheet(tmp_path: Path) -> None:
     arguments = [below / "s.csv", "--out", tmp_path / "out", "--workers", 1, "--no-figures"]
     assert call(*arguments).exit_code == 2
     assert call(*arguments, "--allow-outside").exit_code == 0
+
+
+def test_again_and_redo(tmp_path: Path) -> None:
+    arguments = [sheet(tmp_path, "S1", "bad"), "--out", tmp_path / "out", "--workers", 1, "--no-figures"]
+    assert call(*arguments).exit_code == 1
+    again = call(*arguments)
+    assert again.exit_code == 1
+    assert again.stderr.splitlines()[0] == "[1/2] S1 (kept)"
+    assert again.stdout.startswith(call(*arguments, "--redo").stdout[:200])
+    assert "(kept)" not in call(*arguments, "--redo").stderr
+
+
+def test_several_sources_and_patterns(tmp_path: Path) -> None:
+    sheet(tmp_path, "S1", "S2")
+    (tmp_path / "more").mkdir()
+    for name in ("T1_AD.xy", "T1_EG.xy", "T2_AD.xy"):
+        (tmp_path / "more" / name).write_bytes((tmp_path / "x.xy").read_bytes())
+    result = call(tmp_path / "sheet.csv", tmp_path / "more" / "T*.xy", "--out", tmp_path / "out", "--workers", 1, "--no-figures")
+    assert result.exit_code == 0, result.output
+    told = [line.split(" (")[0] for line in result.stderr.splitlines()]
+    assert told == ["[1/4] S1", "[2/4] S2", "[3/4] T1", "[4/4] T2"]
+    nothing = call(tmp_path / "no*.xy", "--out", tmp_path / "out")
+    assert nothing.exit_code == 2
+    assert "matches nothing" in nothing.stderr
+
+
+def test_report_bom_and_time_limit(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    import fake_page
+
+    monkeypatch.setitem(sys.modules, "xrdmica.report.page", fake_page)
+    arguments = [sheet(tmp_path, "S1"), "--out", tmp_path / "out", "--report", "--bom", "--workers", 1]
+    result = call(*arguments)
+    assert result.exit_code == 0, result.output
+    assert "index.html: overview" in result.stdout
+    assert (tmp_path / "out" / "S1.html").exists()
+    assert (tmp_path / "out" / "summary.csv").read_bytes().startswith(b"\xef\xbb\xbf")
+    assert call(*arguments, "--time-limit", 0).exit_code == 2
+
+
+def test_time_limit(tmp_path: Path) -> None:
+    path = sheet(tmp_path, "hang", "S1")
+    command = [sys.executable, str(ROOT / "tests" / "helpers" / "fake_program.py"), "batch", str(path), "--time-limit", "1"]
+    done = subprocess.run(
+        [*command, "--out", str(tmp_path / "out"), "--workers", "1", "--no-figures"],
+        capture_output=True, text=True, timeout=60, env={**os.environ, "PYTHONPATH": str(ROOT)},
+    )  # fmt: skip
+    assert done.returncode == 1
+    assert "hang: FAILED: it was stopped after the time limit of 1 s" in done.stderr
+
+
+def test_two_runs_into_one_folder(tmp_path: Path) -> None:
+    from xrdmica.batch.lock import locked
+
+    (tmp_path / "out").mkdir()
+    with locked(tmp_path / "out"):
+        result = call(sheet(tmp_path, "S1"), "--out", tmp_path / "out")
+    assert result.exit_code == 2
+    assert len(result.stderr.splitlines()) == 1
+
+
+def test_drafted_sheet(tmp_path: Path) -> None:
+    sheet(tmp_path).unlink()
+    (tmp_path / "x.xy").rename(tmp_path / "S1_AD.xy")
+    result = call(tmp_path, "--write-sheet", tmp_path / "new.csv")
+    assert result.exit_code == 0, result.output
+    assert "Check sample, mount and treatment" in result.stderr
+    assert f"xrdmica batch {tmp_path / 'new.csv'} --out DIR" in result.stderr
+    assert "S1,S1_AD.xy,oriented,air_dried" in (tmp_path / "new.csv").read_text(encoding="utf-8")
+    assert call(tmp_path / "new.csv", "--write-sheet", tmp_path / "other.csv").exit_code == 2
+    assert call(tmp_path, tmp_path, "--write-sheet", tmp_path / "other.csv").exit_code == 2
+    assert call(tmp_path).exit_code == 2
+
+
+def test_pace() -> None:
+    from xrdmica.batch.run import Progress
+    from xrdmica.cli.batch_progress import Pace
+
+    now = [0.0]
+    pace = Pace(lambda: now[0])
+
+    def words(done: int, seconds: float, failed: int = 0, kept: bool = False) -> str:
+        now[0] = seconds
+        return pace.words(Progress("S", done, done, 100, None, True, failed, kept))
+
+    assert words(1, 0.5, kept=True) == ""
+    assert words(2, 2.0) == ""
+    assert words(3, 4.0, failed=1) == "1 failed, 30.0/min, 3 min 14 s left"
+    assert words(100, 10.0) == "9.9/s"
+    now[0] = 0.0
+    slow = Pace(lambda: now[0])
+    now[0] = 7200.0
+    assert slow.words(Progress("S", 1, 2, 100, None, True)) == "1.0/h, 98 h 00 min left"
+
+
+def test_bar_on_a_terminal(tmp_path: Path) -> None:
+    """A pseudo-terminal on stderr gets a bar that moves; nothing of it reaches stdout."""
+    pty = pytest.importorskip("pty", reason="needs a pseudo-terminal")
+    path = sheet(tmp_path, "S1", "bad", "S2", "slow")
+    parent, child = pty.openpty()
+    command = [sys.executable, str(ROOT / "tests" / "helpers" / "fake_program.py"), "batch", str(path)]
+    run = subprocess.Popen(
+        [*command, "--out", str(tmp_path / "out"), "--workers", "1", "--no-figures"],
+        stdout=subprocess.PIPE, stderr=child, env={**os.environ, "PYTHONPATH": str(ROOT), "TERM": "xterm", "COLUMNS": "120"},
+    )  # fmt: skip
+    os.close(child)
+    seen = b""
+    while True:
+        try:
+            data = os.read(parent, 65536)
+        except OSError:
+            break
+        if not data:
+            break
+        seen += data
+    out, _ = run.communicate(timeout=60)
+    assert run.returncode == 1
+    assert b"4/4" in seen
+    assert b"1 failed" in seen
+    assert b"nothing to fit" in seen
+    assert b"\x1b[" in seen
+    assert b"\x1b[?25" not in out

@@ -2,16 +2,18 @@
 
 from __future__ import annotations
 
+import ctypes
 import os
 import time
-from dataclasses import dataclass, replace
+from collections.abc import Sequence
+from dataclasses import dataclass, field, replace
 from pathlib import Path
 
 import numpy as np
 from finished_sample import build_result
 
 from xrdmica.errors import FitError
-from xrdmica.results import Findings, SampleResult
+from xrdmica.results import Findings, GroupWeight, PhaseWeight, SampleResult
 from xrdmica.scans.scan import Sample, Scan
 
 
@@ -34,11 +36,31 @@ class FakeEntry:
 
     name: str
     rows: tuple[FakeRow, ...] = ()
+    details: dict[str, str] = field(default_factory=dict)
 
     def load(self) -> Sample:
         angle = np.linspace(2, 40, 60)
         scan = Scan.from_arrays(angle, np.ones(60), source="none.xy")
-        return Sample(self.name, (replace(scan),))
+        return Sample(self.name, (replace(scan),), self.details)
+
+
+def with_weights(name: str, weights: Sequence[float], curves: bool, details: dict[str, str]) -> SampleResult:
+    """A finished sample with given weights of illite, kaolinite, smectite, chlorite."""
+    result = build_result(name, curves=curves, points=60)
+    phases = tuple(
+        phase.model_copy(update={"weight_percent": weights[k] if k < len(weights) else None, "low95": None, "high95": None})
+        for k, phase in enumerate(result.proportions.phases)
+    )
+    proportions = result.proportions.model_copy(update={"phases": phases, "groups": groups_of(phases)})
+    return result.model_copy(update={"proportions": proportions, "curves": result.curves[:1], "details": details})
+
+
+def groups_of(phases: Sequence[PhaseWeight]) -> tuple[GroupWeight, ...]:
+    sums: dict[str, float] = {}
+    for phase in phases:
+        if phase.weight_percent is not None:
+            sums[phase.group] = sums.get(phase.group, 0.0) + phase.weight_percent
+    return tuple(GroupWeight(group=group, status="present", weight_percent=weight) for group, weight in sums.items())
 
 
 def analyse(sample: Sample, settings: FakeSettings) -> SampleResult:
@@ -51,6 +73,13 @@ def analyse(sample: Sample, settings: FakeSettings) -> SampleResult:
         os._exit(7)
     if "slow" in sample.name:
         time.sleep(0.3)
+    if "segfault" in sample.name:
+        ctypes.string_at(0)
+    if "hang" in sample.name:
+        time.sleep(3600)
+    if "spin" in sample.name:
+        while True:
+            pass
     result = build_result(sample.name, curves=settings.curves, points=60)
     return result.model_copy(update={"curves": result.curves[:1]})
 
@@ -66,6 +95,10 @@ def load_and_analyse(entry: FakeEntry) -> SampleResult:
 
 def double(value: int) -> int:
     return 2 * value
+
+
+def process_id(value: int) -> int:
+    return os.getpid()
 
 
 def die_once(marker: str) -> str:

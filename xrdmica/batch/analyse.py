@@ -37,8 +37,8 @@ class Settings:
         Tube or wavelength for scans that do not say.
     phases : tuple of str
         Library ids to consider; empty for all.
-    instrument : str or None
-        Path of an instrument file.
+    instrument : str, Instrument or None
+        Path of an instrument file, or what it says.
     curves : bool
         Whether results carry the curves that figures need.
     width_calibration : str or None
@@ -51,7 +51,7 @@ class Settings:
 
     radiation: str | None = None
     phases: tuple[str, ...] = ()
-    instrument: str | None = None
+    instrument: str | Instrument | None = None
     curves: bool = True
     width_calibration: str | None = None
     formulas: tuple[tuple[str, str], ...] = ()
@@ -76,7 +76,8 @@ def analyse_sample(sample: Sample, settings: Settings | None = None) -> SampleRe
         If a phase id or the instrument file is not usable, or a scan holds too little of the useful range.
     """
     chosen = settings or Settings()
-    instrument = load_instrument(chosen.instrument) if chosen.instrument else Instrument()
+    given = chosen.instrument or Instrument()
+    instrument = given if isinstance(given, Instrument) else load_instrument(given)
     phases: list[Phase] | None = [load_phase(name) for name in chosen.phases] or None
     examination = examine(sample, phases, instrument)
     known = {phase: SiteFormula.parse(text) for phase, text in chosen.formulas}

@@ -1,49 +1,35 @@
-"""Run many samples: each is written when it is finished, one that fails does not stop the others."""
+"""Run many samples: each is written when it is finished, one that fails does not stop the others, a repeat does the rest."""
 
 from __future__ import annotations
 
 import dataclasses
-import hashlib
-import json
-import platform
 from collections.abc import Callable, Iterator, Sequence
-from dataclasses import dataclass
-from importlib import metadata
+from dataclasses import dataclass, field
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 from xrdmica._version import __version__
-from xrdmica.batch.executors import executor_for
+from xrdmica.batch.executors import Executor, executor_for
+from xrdmica.batch.lock import locked, refuse_if_locked
+from xrdmica.batch.record import write_record
+from xrdmica.batch.resume import FINGERPRINT, Circumstances, circumstances, digests_of, fingerprint_of, read_head
+from xrdmica.batch.store import commit, sweep, withdraw
+from xrdmica.batch.task import Analyse, Job, Outcome, work
 from xrdmica.errors import XrdmicaError
-from xrdmica.paths import data_folder
-from xrdmica.report.files import (
-    FAILURES_HEADER,
-    GROUPS_HEADER,
-    PROPORTIONS_HEADER,
-    SUMMARY_HEADER,
-    failures_rows,
-    groups_rows,
-    plan_stems,
-    proportions_rows,
-    sample_of_file,
-    summary_rows,
-    write_csv,
-    write_result,
-    write_text,
-)
+from xrdmica.report.files import plan_stems, read_result, write_bytes, write_text
 from xrdmica.results import SampleResult
 
 if TYPE_CHECKING:
     from xrdmica.batch.analyse import Settings
     from xrdmica.batch.sheet import FoundSamples, SampleEntry
-    from xrdmica.scans.scan import Sample
+    from xrdmica.batch.sources import Gathered
 
 __all__ = ["BATCH_FILES", "Progress", "run_batch"]
 
-Analyse = Callable[["Sample", "Settings"], SampleResult]
-
-BATCH_FILES = ("proportions.csv", "groups.csv", "summary.csv", "failures.csv", "run.json")
-_PACKAGES = ("numpy", "scipy", "lmfit", "pymatgen", "matplotlib", "xraydb", "pybaselines", "gemmi", "pydantic")
+BATCH_FILES = (
+    "proportions.csv", "proportions_wide.csv", "groups.csv", "indices.csv", "summary.csv", "repeats.csv", "failures.csv",
+    "proportions.svg", "ternary.svg", "run.json", "index.html",
+)  # fmt: skip
 
 
 @dataclass(frozen=True)
@@ -62,6 +48,10 @@ class Progress:
         Why the sample failed (or its figure could not be drawn); None when all is well.
     finished : bool
         Whether there is a result.
+    failed : int
+        How many samples have no result so far.
+    kept : bool
+        Whether the result is that of an earlier run, still good.
     """
 
     sample: str
@@ -70,68 +60,131 @@ class Progress:
     total: int
     reason: str | None
     finished: bool
+    failed: int = 0
+    kept: bool = False
 
 
-@dataclass(frozen=True)
+@dataclass
 class _Task:
+    """One sample of a run and what has become of it; small, for there may be very many."""
+
     index: int
     entry: SampleEntry
     stem: str
-    out: Path
-    settings: Settings
-    figures: bool
-    analyse: Analyse
+    digests: tuple[bytes | None, ...] = ()
+    fingerprint: str = ""
+    finished: bool = False
+    reason: str | None = None
 
 
 @dataclass(frozen=True)
-class _Outcome:
-    result: SampleResult
-    figure_problem: str | None
+class _Plan:
+    tasks: Sequence[_Task]
+    out: Path
+    settings: Settings
+    analyse: Analyse
+    figures: bool
+    report: bool
+    redo: bool
+    curves: bool
+    bom: bool
+    executor: Executor
+    on_progress: Callable[[Progress], None] | None
+    origin: dict[str, Any]
+    count: dict[str, int] = field(default_factory=lambda: {"done": 0, "failed": 0})
+
+    def suffixes(self) -> tuple[str, ...]:
+        """What a finished sample has beside its JSON."""
+        figure = self.figures and getattr(self.settings, "curves", True)
+        return ((".png",) if figure else ()) + ((".html",) if self.report else ())
+
+    def told(self, task: _Task, *, kept: bool = False) -> None:
+        """Count a sample that ended and tell of it."""
+        self.count["done"] += 1
+        self.count["failed"] += not task.finished
+        if self.on_progress is not None:
+            self.on_progress(
+                Progress(task.entry.name, task.index, self.count["done"], len(self.tasks), task.reason, task.finished,
+                         self.count["failed"], kept)
+            )  # fmt: skip
+
+    def result(self, task: _Task) -> SampleResult:
+        """A finished result as its file has it."""
+        path = self.out / f"{task.stem}.json"
+        head = None if self.curves else read_head(path)
+        return head if head is not None else read_result(path)
 
 
 def run_batch(
-    source: str | Path | FoundSamples | Sequence[SampleEntry],
+    source: str | Path | FoundSamples | Gathered | Sequence[SampleEntry] | Sequence[str | Path],
     out: str | Path,
     *,
     settings: Settings | None = None,
     workers: int | None = None,
     figures: bool = True,
+    report: bool = False,
+    redo: bool = False,
+    time_limit: float | None = None,
+    scheduler: str | None = None,
+    bom: bool = False,
+    curves: bool = True,
     on_progress: Callable[[Progress], None] | None = None,
     analyse: Analyse | None = None,
 ) -> Iterator[SampleResult]:
-    """Analyse every sample of a sheet or folder and write the results.
+    """Analyse every sample of sheets, folders and patterns and write the results.
 
-    ``<sample>.json`` and ``<sample>.png`` are written as soon as a sample is finished; ``proportions.csv``, ``groups.csv``,
-    ``summary.csv``, ``run.json`` and, when samples failed, ``failures.csv`` when the last one is. Their rows follow the
-    order of the sheet however many workers there are. Results of other samples in the folder are left alone.
+    ``<sample>.json`` and its figure (and page) are written as soon as a sample is finished, the tables and figures over all
+    samples, ``failures.csv`` when samples failed, and ``run.json`` when the last one is: a folder without ``run.json``
+    holds a run that is not complete. Rows follow the order of the sheet; the files are the same byte for byte however
+    many workers there are. A second run into the same folder keeps every result whose inputs, settings, versions and phase
+    files have not changed, does the rest, and ends with the files of a run that was never interrupted. Results of other
+    samples in the folder are left alone. One run at a time may write into a folder.
+
+    Worker processes are programs of their own that do not import the script or notebook they are started from: with
+    ``workers`` this function can be called in a notebook cell, and in a script without ``if __name__ == "__main__":``. Only
+    ``scheduler="local"`` starts workers that import the script, which needs that line then. An iterator that is not used
+    to the end holds the folder until it is closed or forgotten: call its ``close()``.
 
     Parameters
     ----------
-    source : path, FoundSamples or sequence of SampleEntry
-        Sample sheet, folder of exports, or what `xrdmica.batch.sheet.entries_from` made of it.
+    source : path, paths, FoundSamples, Gathered or sequence of SampleEntry
+        Sample sheets, folders of exports, patterns such as ``"scans/*.xy"``, or what `xrdmica.batch.sheet.entries_from`
+        or `xrdmica.batch.sources.gather` made of them.
     out : path
         Folder for the results; made when it does not exist.
     settings : Settings, optional
         How to analyse.
     workers : int, optional
-        Worker processes; None or 1 computes in this process. A script that asks for more needs the usual
-        ``if __name__ == "__main__":`` because workers import it.
+        Worker processes; None or 1 computes in this process.
     figures : bool
-        Whether to draw ``<sample>.png``.
+        Whether to draw ``<sample>.png`` and the figures over all samples.
+    report : bool
+        Whether to write ``<sample>.html`` and the overview ``index.html``.
+    redo : bool
+        Whether to do everything again.
+    time_limit : float, optional
+        Longest time for a sample [s]; one that takes longer is stopped and reported.
+    scheduler : str, optional
+        Address of a Dask scheduler, or ``"local"`` for one on this machine (``xrdmica[cluster]``).
+    bom : bool
+        Whether tables start with the mark by which some spreadsheets know UTF-8.
+    curves : bool
+        Whether the results that are yielded carry their curves; the files always do.
     on_progress : callable, optional
         Told after every sample, also of those that fail.
     analyse : callable, optional
-        What to do with a sample, by default `xrdmica.batch.analyse.analyse_sample`; with workers it must pickle.
+        What to do with a sample, by default `xrdmica.batch.analyse.analyse_sample`; with workers it must stand in a module.
 
     Yields
     ------
     SampleResult
-        Finished samples as they come; nothing runs until the iterator is used.
+        Finished samples as they come, as the files have them; nothing runs until the iterator is used.
 
     Raises
     ------
     XrdmicaError
-        At once when the source cannot be read or the output folder cannot be used.
+        At once when the source cannot be read or the output folder cannot be used; while running when a result cannot be
+        written.
     """
     if settings is None or analyse is None:
         from xrdmica.batch.analyse import Settings, analyse_sample
@@ -139,36 +192,60 @@ def run_batch(
         settings = settings or Settings()
         analyse = analyse or analyse_sample
     out = Path(out)
-    if isinstance(source, str | Path):
-        from xrdmica.batch.sheet import entries_from
-
-        source = entries_from(source, radiation=settings.radiation)
-    entries = list(source)
-    sheet: Path | None = getattr(source, "sheet", None)
-    skipped = [{"file": s.file.name, "reason": s.reason} for s in getattr(source, "skipped", ())]
-    _check_folder(out, sheet, entries)
+    entries, origin, sheets = _entries(source, settings)
+    executor = executor_for(workers, len(entries), time_limit=time_limit, scheduler=scheduler)
+    _check_folder(out, sheets, entries)
     stems = plan_stems([entry.name for entry in entries], out)
-    tasks = [_Task(k, entry, stems[entry.name], out, settings, figures, analyse) for k, entry in enumerate(entries)]
-    return _run(tasks, out, settings, workers, on_progress, {"sheet": sheet.name if sheet else None, "not_read": skipped})
+    tasks = [_Task(k, entry, stems[entry.name]) for k, entry in enumerate(entries)]
+    shared = circumstances(settings, analyse)
+    if executor.remote and isinstance(settings.instrument, str):
+        from xrdmica.diffraction.optics import load_instrument
+
+        settings = dataclasses.replace(settings, instrument=load_instrument(settings.instrument))
+    return _run(
+        _Plan(tasks, out, settings, analyse, figures, report, redo, curves, bom, executor, on_progress, origin), shared
+    )
 
 
-def _check_folder(out: Path, sheet: Path | None, entries: Sequence[SampleEntry]) -> None:
+def _entries(source: Any, settings: Settings) -> tuple[list[SampleEntry], dict[str, Any], list[Path]]:
+    """The samples, what the record says about where they come from, and the sheets."""
+    if isinstance(source, str | Path) or (
+        isinstance(source, list | tuple) and source and all(isinstance(s, str | Path) for s in source)
+    ):
+        from xrdmica.batch.sources import gather
+
+        source = gather(source, radiation=settings.radiation)
+    sheet: Path | None = getattr(source, "sheet", None)
+    sheets = list(getattr(source, "sheets", ())) or ([sheet] if sheet is not None else [])
+    skipped = [{"file": s.file.name, "reason": s.reason} for s in getattr(source, "skipped", ())]
+    return list(source), {"sheets": [path.name for path in sheets], "not_read": skipped}, sheets
+
+
+def _check_folder(out: Path, sheets: Sequence[Path], entries: Sequence[SampleEntry]) -> None:
     """Refuse an output folder where results would overwrite what was measured or be taken for scans later."""
     if out.exists() and not out.is_dir():
         raise XrdmicaError(f"{out}: is a file, not a folder", fix="name a folder for the results")
     place = out.resolve()
-    scans = {path.resolve() for entry in entries for path in input_files(entry)}
-    overwritten = sorted((scans | ({sheet.resolve()} if sheet else set())) & {place / name for name in BATCH_FILES})
+    parents: dict[Path, Path] = {}  # many scans stand in few folders
+    scans = set()
+    for entry in entries:
+        for path in input_files(entry):
+            parent = parents.setdefault(path.parent, path.parent.resolve())
+            if parent == place:
+                scans.add(path.name)
+    beside = scans | {sheet.name for sheet in sheets if sheet.resolve().parent == place}
+    overwritten = sorted(beside & set(BATCH_FILES))
     if overwritten:
         raise XrdmicaError(
-            f"{out}: the results would overwrite the input {overwritten[0].name}", fix="name another folder for the results"
+            f"{out}: the results would overwrite the input {overwritten[0]}", fix="name another folder for the results"
         )
-    if any(path.parent == place for path in scans):
+    if scans:
         raise XrdmicaError(
             f"{out}: is the folder with the scans", why="the tables would be taken for scans next time",
             fix="name another folder for the results",
         )  # fmt: skip
     write_text(place / ".xrdmica-writable", "").unlink()
+    refuse_if_locked(out)
 
 
 def input_files(entry: SampleEntry) -> tuple[Path, ...]:
@@ -176,137 +253,93 @@ def input_files(entry: SampleEntry) -> tuple[Path, ...]:
     return tuple(Path(row.path) for row in entry.rows)
 
 
-def _run(
-    tasks: Sequence[_Task],
-    out: Path,
-    settings: Settings,
-    workers: int | None,
-    on_progress: Callable[[Progress], None] | None,
-    origin: dict[str, Any],
-) -> Iterator[SampleResult]:
-    inputs = [_fingerprints(task.entry) for task in tasks]
-    results: dict[int, SampleResult] = {}
-    reasons: dict[int, str] = {}
-    outcomes = executor_for(workers, len(tasks)).map_unordered(_one_sample, tasks)
-    for ended, (task, outcome) in enumerate(outcomes, start=1):
-        reason: str | None
-        if isinstance(outcome, Exception):
-            reason = " ".join(str(outcome).split())
-            _remove_stale(task, ".json", ".png")
-        else:
-            reason = outcome.figure_problem
-            # curves stay in the file: hundreds of samples would fill the memory
-            results[task.index] = outcome.result.model_copy(update={"curves": ()})
-            if not task.figures or reason is not None:
-                _remove_stale(task, ".png")
-        if reason is not None:
-            reasons[task.index] = reason
-        if on_progress is not None:
-            finished = not isinstance(outcome, Exception)
-            on_progress(Progress(task.entry.name, task.index, ended, len(tasks), reason, finished))
-        if not isinstance(outcome, Exception):
-            yield outcome.result
-    _write_tables(out, tasks, results, reasons)
-    _write_record(out, tasks, results, reasons, inputs, settings, origin)
+# ---------------------------------------------------------------- the run
 
 
-def _one_sample(task: _Task) -> _Outcome:
-    """Load, analyse and write one sample; runs in a worker."""
-    result = task.analyse(task.entry.load(), task.settings)
-    write_result(result, task.out, stem=task.stem)
-    problem = None
-    if task.figures and result.curves:
-        from xrdmica.report.figures import sample_figure, save_figure
+def _run(plan: _Plan, shared: Circumstances) -> Iterator[SampleResult]:
+    from xrdmica.batch.campaign import Ended, write_campaign
 
-        try:
-            save_figure(sample_figure(result), task.out / f"{task.stem}.png")
-        except Exception as error:
-            problem = f"the result is complete, but its figure could not be drawn: {error}"
-    return _Outcome(result, problem)
-
-
-def _remove_stale(task: _Task, *suffixes: str) -> None:
-    """Take away what an earlier run left for this sample, so that nobody takes it for the result of this one."""
-    if sample_of_file(task.out / f"{task.stem}.json") == task.entry.name:
-        for suffix in suffixes:
-            (task.out / f"{task.stem}{suffix}").unlink(missing_ok=True)
-
-
-def _write_tables(out: Path, tasks: Sequence[_Task], results: dict[int, SampleResult], reasons: dict[int, str]) -> None:
-    ordered = [results[task.index] for task in tasks if task.index in results]
-    write_csv(out / "proportions.csv", PROPORTIONS_HEADER, proportions_rows(ordered))
-    write_csv(out / "groups.csv", GROUPS_HEADER, groups_rows(ordered))
-    write_csv(out / "summary.csv", SUMMARY_HEADER, summary_rows(ordered))
-    if reasons:
-        failures = [(task.entry.name, reasons[task.index]) for task in tasks if task.index in reasons]
-        write_csv(out / "failures.csv", FAILURES_HEADER, failures_rows(failures))
-    else:
-        (out / "failures.csv").unlink(missing_ok=True)
+    with locked(plan.out):
+        sweep(plan.out)
+        (plan.out / "run.json").unlink(missing_ok=True)
+        common = shared.digest()
+        waiting: list[_Task] = []
+        for task in plan.tasks:
+            task.digests = digests_of(input_files(task.entry))
+            task.fingerprint = fingerprint_of(task.entry, task.digests, common)
+            if _complete(plan, task):
+                plan.told(task, kept=True)
+                yield plan.result(task)
+            else:
+                waiting.append(task)
+        script = [plan.report]
+        for job, outcome in plan.executor.map_unordered(work, _jobs(plan, waiting, script)):
+            task = plan.tasks[job.index]
+            _settle(plan, task, outcome, script)
+            plan.told(task)
+            if task.finished:
+                yield plan.result(task)
+        write_campaign(
+            plan.out, [Ended(t.entry.name, t.stem if t.finished else None, t.reason or "") for t in plan.tasks],
+            details=(getattr(task.entry, "details", {}) for task in plan.tasks), figures=plan.figures, report=plan.report,
+            bom=plan.bom,
+        )  # fmt: skip
+        write_record(plan.out, plan.tasks, shared, plan.origin)
 
 
-# ---------------------------------------------------------------- the record of the run
+def _complete(plan: _Plan, task: _Task) -> bool:
+    """Whether an earlier run left all that this sample should have; marks it as finished then."""
+    if plan.redo or not _has_result(plan, task):
+        return False
+    for suffix in (".png", ".html"):
+        there = (plan.out / f"{task.stem}{suffix}").exists()
+        if suffix in plan.suffixes() and not there:
+            return False
+        if there and suffix not in plan.suffixes():
+            (plan.out / f"{task.stem}{suffix}").unlink(missing_ok=True)
+    task.finished = True
+    return True
 
 
-def _write_record(
-    out: Path,
-    tasks: Sequence[_Task],
-    results: dict[int, SampleResult],
-    reasons: dict[int, str],
-    inputs: Sequence[list[dict[str, str | None]]],
-    settings: Settings,
-    origin: dict[str, Any],
-) -> None:
-    """``run.json``: what is needed to repeat the run. No clock and no worker count, so that a repeat gives equal bytes."""
-    samples = []
-    for task, files in zip(tasks, inputs, strict=True):
-        done = task.index in results
-        record: dict[str, Any] = {"sample": task.entry.name, "status": "done" if done else "failed"}
-        if done:
-            record["result"] = f"{task.stem}.json"
-        if task.index in reasons:
-            record["reason"] = reasons[task.index]
-        samples.append({**record, "inputs": files})
-    record = {
-        "program": "xrdmica",
-        "version": __version__,
-        "python": platform.python_version(),
-        "packages": _package_versions(),
-        "structures_sha256": _structures_fingerprint(),
-        "settings": dataclasses.asdict(settings),
-        **origin,
-        "samples": samples,
-    }
-    write_text(out / "run.json", json.dumps(record, indent=2, ensure_ascii=False, default=str) + "\n")
+def _has_result(plan: _Plan, task: _Task) -> bool:
+    head = read_head(plan.out / f"{task.stem}.json")
+    return head is not None and head.sample == task.entry.name and head.settings.get(FINGERPRINT) == task.fingerprint
 
 
-def _fingerprints(entry: SampleEntry) -> list[dict[str, str | None]]:
-    out: list[dict[str, str | None]] = []
-    for path in input_files(entry):
-        try:
-            digest: str | None = hashlib.sha256(path.read_bytes()).hexdigest()
-        except OSError:
-            digest = None  # the sample itself will fail and say why
-        out.append({"file": path.name, "sha256": digest})
-    return out
+def _jobs(plan: _Plan, waiting: Sequence[_Task], script: Sequence[bool]) -> Iterator[Job]:
+    """Work for the executor, made when it is asked for; `script` says whether the shared files of pages are still wanted."""
+    for task in waiting:
+        source: Any = task.entry
+        wanted = plan.suffixes()
+        if not plan.redo and _has_result(plan, task):
+            source = read_result(plan.out / f"{task.stem}.json")
+            wanted = tuple(suffix for suffix in wanted if not (plan.out / f"{task.stem}{suffix}").exists())
+        elif plan.executor.remote:
+            try:
+                source = task.entry.load()
+            except Exception as error:
+                source = error
+        yield Job(
+            task.index, source, plan.settings, plan.analyse, task.fingerprint, ".png" in wanted, ".html" in wanted, script[0]
+        )
 
 
-def _package_versions() -> dict[str, str | None]:
-    versions: dict[str, str | None] = {}
-    for name in _PACKAGES:
-        try:
-            versions[name] = metadata.version(name)
-        except metadata.PackageNotFoundError:
-            versions[name] = None
-    return versions
-
-
-def _structures_fingerprint() -> str | None:
-    """One check sum over all phase files: results depend on them as much as on the program."""
-    try:
-        folder = data_folder("structures")
-    except XrdmicaError:
-        return None
-    digest = hashlib.sha256()
-    for path in sorted(folder.glob("*.toml")):
-        digest.update(path.name.encode() + b"\0" + path.read_bytes() + b"\0")
-    return digest.hexdigest()
+def _settle(plan: _Plan, task: _Task, outcome: Outcome | Exception, script: list[bool]) -> None:
+    """Write what a worker sent back and note what became of the sample."""
+    if isinstance(outcome, Exception):
+        task.reason = " ".join(str(outcome).split())
+        withdraw(plan.out, task.stem, task.entry.name)
+        return
+    if outcome.version != __version__:
+        raise XrdmicaError(
+            f"a worker has version {outcome.version} of this program, here it is {__version__}",
+            fix="install the same version everywhere",
+        )
+    for name, content in outcome.shared.items():
+        write_bytes(plan.out / name, content)
+        script[0] = False
+    # with a new JSON all others are new too; without one, what is there belongs to it
+    keep = () if ".json" in outcome.files else plan.suffixes()
+    commit(plan.out, task.stem, outcome.files, keep=keep)
+    task.finished = True
+    task.reason = outcome.problem

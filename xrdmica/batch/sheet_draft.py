@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import csv
 import io
+import os
 from pathlib import Path
 
 from xrdmica.batch.sheet import samples_in_folder
@@ -18,7 +19,7 @@ SHEET_NAME = "samples.csv"
 _HEADER = ("sample", "file", "mount", "treatment", "radiation", "note")
 
 
-def write_sheet(folder: str | Path) -> Path:
+def write_sheet(folder: str | Path, path: str | Path | None = None) -> Path:
     """Write a sample sheet into a folder of scans, to be checked and completed by hand.
 
     Sample, mount and treatment come from the file names; the radiation is filled in where the file itself names it and
@@ -28,6 +29,8 @@ def write_sheet(folder: str | Path) -> Path:
     ----------
     folder : str or Path
         Folder with the exports; folders inside are not searched.
+    path : str or Path, optional
+        The new sheet; by default ``samples.csv`` in the folder. Files are named as they are seen from where it stands.
 
     Returns
     -------
@@ -40,7 +43,7 @@ def write_sheet(folder: str | Path) -> Path:
         If the folder holds no scans or has a sample sheet already.
     """
     folder = Path(folder)
-    path = folder / SHEET_NAME
+    path = folder / SHEET_NAME if path is None else Path(path)
     if path.exists():
         raise SheetError(f"{path}: there is a file of this name already", fix="rename or remove it, or edit it instead")
     found = samples_in_folder(folder)
@@ -52,10 +55,14 @@ def write_sheet(folder: str | Path) -> Path:
     for entry in found:
         for row in entry.rows:
             radiation, note = _known(row)
-            writer.writerow([entry.name, row.path.name, row.mount, row.treatment.name, radiation, note])
+            writer.writerow([entry.name, _seen_from(path.parent, row.path), row.mount, row.treatment.name, radiation, note])
     # the mark at the start tells spreadsheets that this is UTF-8
     write_atomically(path, "\ufeff" + stream.getvalue())
     return path
+
+
+def _seen_from(place: Path, file: Path) -> str:
+    return Path(os.path.relpath(file.resolve(), place.resolve())).as_posix()
 
 
 def _known(row: SheetRow) -> tuple[str, str]:

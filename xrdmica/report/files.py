@@ -35,7 +35,7 @@ from xrdmica.scans.write import write_atomically
 __all__ = [
     "EVIDENCE_HEADER", "FAILURES_HEADER", "GROUPS_HEADER", "PROPORTIONS_HEADER", "SUMMARY_HEADER", "all_notes",
     "evidence_rows", "failures_rows", "file_stem", "groups_rows", "plan_stems", "proportions_rows", "read_result",
-    "result_text", "sample_of_file", "summary_rows", "write_bytes", "write_csv", "write_result", "write_text",
+    "result_text", "sample_of_file", "summary_rows", "table_cell", "write_bytes", "write_csv", "write_result", "write_text",
 ]  # fmt: skip
 
 _RESERVED = frozenset({"run", "index"})  # run.json is the record of the batch, index the front page
@@ -148,7 +148,8 @@ def plan_stems(samples: Sequence[str], folder: Path | None = None) -> dict[str, 
     for sample, stem in plain.items():
         rivals.setdefault(stem.casefold(), []).append(sample)
     files = folder.glob("*.json") if folder is not None and folder.is_dir() else ()
-    taken = {path.stem.casefold(): path for path in files}
+    # an empty file is what a power cut may leave: it belongs to nobody
+    taken = {path.stem.casefold(): path for path in files if path.stat().st_size}
     out = {}
     for sample, stem in plain.items():
         key = stem.casefold()
@@ -267,7 +268,7 @@ def read_result(path: Path) -> SampleResult:
 # ---------------------------------------------------------------- tables
 
 
-def _cell(value: Cell) -> str:
+def table_cell(value: Cell) -> str:
     """One cell: unknown stays empty, text cannot start a spreadsheet formula."""
     if value is None:
         return ""
@@ -315,9 +316,9 @@ def write_csv(path: Path, header: Sequence[str], rows: Iterable[Sequence[Cell]])
     """
     buffer = io.StringIO(newline="")
     writer = csv.writer(buffer, lineterminator="\n")
-    writer.writerow([_cell(name) for name in header])
+    writer.writerow([table_cell(name) for name in header])
     for row in rows:
         if len(row) != len(header):
             raise ValueError(f"a row of {len(row)} cells under {len(header)} columns")
-        writer.writerow([_cell(value) for value in row])
+        writer.writerow([table_cell(value) for value in row])
     return write_bytes(path, buffer.getvalue().encode("utf-8", errors="replace"))

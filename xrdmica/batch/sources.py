@@ -1,0 +1,122 @@
+"""Samples of several sheets, folders, files and patterns together."""
+
+from __future__ import annotations
+
+import glob
+from collections.abc import Iterator, Sequence
+from dataclasses import dataclass
+from pathlib import Path
+
+from xrdmica.batch.sheet import (
+    _SCAN_SUFFIXES,
+    FoundSamples,
+    SampleEntry,
+    Skipped,
+    _entries_by_name,
+    _is_sheet,
+    _natural,
+    _suffix,
+    _tube,
+    entries_from,
+)
+from xrdmica.errors import SheetError
+from xrdmica.radiation import Radiation
+
+__all__ = ["Gathered", "gather"]
+
+
+@dataclass(frozen=True)
+class Gathered:
+    """Samples from several places.
+
+    Attributes
+    ----------
+    entries : tuple of SampleEntry
+        In the order of the sources.
+    skipped : tuple of Skipped
+        Files that are no scans.
+    sheets : tuple of Path
+        The sheets that were used.
+    """
+
+    entries: tuple[SampleEntry, ...]
+    skipped: tuple[Skipped, ...] = ()
+    sheets: tuple[Path, ...] = ()
+
+    def __iter__(self) -> Iterator[SampleEntry]:
+        return iter(self.entries)
+
+    def __len__(self) -> int:
+        return len(self.entries)
+
+
+def gather(
+    sources: str | Path | Sequence[str | Path], *, radiation: str | Radiation | None = None, allow_outside: bool = False
+) -> Gathered:
+    """Samples of everything the user points at.
+
+    Parameters
+    ----------
+    sources : path or sequence of paths
+        Sample sheets, folders, exports, and patterns with ``*``, ``?``, ``[...]`` or ``**``. Exports that stand in the
+        same folder are put together to samples by their names.
+    radiation : str or Radiation, optional
+        Tube for all scans for which a sheet does not name one.
+    allow_outside : bool
+        Whether a sheet may name files outside its own folder.
+
+    Raises
+    ------
+    SheetError
+        If a source cannot be used, a pattern finds nothing, or two sources name the same sample.
+    """
+    given = [sources] if isinstance(sources, str | Path) else list(sources)
+    parts: list[tuple[str, FoundSamples]] = []
+    loose: dict[Path, list[Path]] = {}
+    skipped: list[Skipped] = []
+    for text in given:
+        matched = [path for path in _expand(text) if not path.name.startswith((".", "~"))]
+        explicit = matched == [Path(text)]
+        for path in matched:
+            if path.is_dir() or _is_sheet(path) or not path.exists():
+                parts.append((str(path), entries_from(path, radiation=radiation, allow_outside=allow_outside)))
+            elif explicit or _suffix(path) in _SCAN_SUFFIXES:
+                group = loose.setdefault(path.parent, [])
+                if not any(path.samefile(other) for other in group):
+                    group.append(path)
+            else:
+                skipped.append(Skipped(path, "its name does not end like that of an export"))
+    for folder, files in loose.items():
+        parts.append((str(folder), FoundSamples(_entries_by_name(files, _tube(radiation)))))
+    _no_sample_twice(parts)
+    return Gathered(
+        tuple(entry for _, found in parts for entry in found),
+        (*skipped, *(item for _, found in parts for item in found.skipped)),
+        tuple(found.sheet for _, found in parts if found.sheet is not None),
+    )
+
+
+def _expand(text: str | Path) -> list[Path]:
+    """What a pattern matches, in natural order; a path that exists is taken as it stands, whatever it is called."""
+    path = Path(text)
+    if path.exists() or not glob.has_magic(str(text)):
+        return [path]
+    # a pattern with ** also matches the folder it starts in
+    found = sorted((Path(name) for name in glob.glob(str(text), recursive=True)), key=lambda p: (str(p.parent), _natural(p)))  # noqa: PTH207
+    if "**" in str(text):
+        found = [p for p in found if not p.is_dir()]
+    if not found:
+        raise SheetError(f"{text}: the pattern matches nothing", fix="check it, and quote it so that the shell leaves it alone")
+    return found
+
+
+def _no_sample_twice(parts: Sequence[tuple[str, FoundSamples]]) -> None:
+    owner: dict[str, str] = {}
+    for place, found in parts:
+        for entry in found:
+            if entry.name in owner:
+                both = f"{owner[entry.name]} and {place}" if owner[entry.name] != place else place
+                raise SheetError(
+                    f"sample {entry.name} stands twice: {both}", fix="rename one, or run them into folders of their own"
+                )
+            owner[entry.name] = place
