@@ -114,8 +114,20 @@ def fingerprint_of(entry: Any, digests: Sequence[bytes | None], common: str) -> 
         }
         for row, digest in zip(entry.rows, digests, strict=True)
     ]
-    sample = {"name": entry.name, "details": plain(getattr(entry, "details", {})), "rows": rows, "common": common}
+    sample = {
+        "name": entry.name, "details": plain(getattr(entry, "details", {})), "rows": rows, "common": common,
+        "chemistry_sha256": _analysis_digest(entry),
+    }  # fmt: skip
     return _sha(json.dumps(sample, sort_keys=True))
+
+
+def _analysis_digest(entry: Any) -> str | None:
+    """SHA-256 of the table of oxides that the sheet names; None without one."""
+    named = str(getattr(entry, "details", {}).get("chemistry", "")).strip()
+    if not named or not entry.rows:
+        return None
+    (digest,) = digests_of([Path(entry.rows[0].path).parent / named])
+    return digest.hex() if digest else None
 
 
 def read_head(path: Path) -> SampleResult | None:

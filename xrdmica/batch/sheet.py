@@ -16,11 +16,14 @@ from xrdmica.scans.read import NotAScanError, read_scan
 from xrdmica.scans.read.decode import text_lines
 from xrdmica.scans.treatment import Treatment
 
-__all__ = ["FoundSamples", "SampleEntry", "SheetRow", "Skipped", "entries_from", "read_sheet", "samples_in_folder"]
+__all__ = [
+    "SCAN_SUFFIXES", "FoundSamples", "SampleEntry", "SheetRow", "Skipped", "entries_by_name", "entries_from", "is_sheet",
+    "natural_order", "read_sheet", "samples_in_folder", "suffix_of",
+]  # fmt: skip
 
 # may be something else than a scan: looked into
 _OPEN_SUFFIXES = (".csv", ".tsv", ".txt", ".dat", ".cif", ".prn", ".xml", ".nxs", ".h5", ".hdf5")
-_SCAN_SUFFIXES = (".xy", ".xye", ".asc", *_OPEN_SUFFIXES)
+SCAN_SUFFIXES = (".xy", ".xye", ".asc", *_OPEN_SUFFIXES)
 _SHEET_SUFFIXES = (".csv", ".tsv", ".txt")
 
 
@@ -81,7 +84,7 @@ def entries_from(
         return samples_in_folder(path, radiation=radiation, allow_outside=allow_outside)
     if not path.exists():
         raise SheetError(f"{path}: there is no such file or folder", fix="check the name")
-    if _is_sheet(path):
+    if is_sheet(path):
         return FoundSamples(tuple(read_sheet(path, radiation=radiation, allow_outside=allow_outside)), sheet=path)
     guess = guess_from_name(path)
     tube = tube_of(radiation)
@@ -89,16 +92,17 @@ def entries_from(
     return FoundSamples((SampleEntry(guess.sample, (row,)),))
 
 
-def _suffix(path: Path) -> str:
+def suffix_of(path: Path) -> str:
+    """Suffix in small letters, that of the packed file for ``.gz``."""
     return Path(path.name.lower().removesuffix(".gz")).suffix
 
 
-def _natural(path: Path) -> list[tuple[int, int, str]]:
+def natural_order(path: Path) -> list[tuple[int, int, str]]:
     """Sort key under which S2 comes before S10."""
     return [(0, int(part), "") if part.isdigit() else (1, 0, part) for part in re.split(r"(\d+)", path.name.lower()) if part]
 
 
-def _is_sheet(path: Path) -> bool:
+def is_sheet(path: Path) -> bool:
     """Whether the first filled line of a table names the columns sample and file."""
     if path.suffix.lower() not in _SHEET_SUFFIXES:
         return False
@@ -140,10 +144,10 @@ def samples_in_folder(
     folder = Path(folder)
     tube = tube_of(radiation)
     try:
-        files = sorted((p for p in folder.iterdir() if p.is_file() and not p.name.startswith((".", "~"))), key=_natural)
+        files = sorted((p for p in folder.iterdir() if p.is_file() and not p.name.startswith((".", "~"))), key=natural_order)
     except OSError as problem:
         raise SheetError(f"{folder}: the folder cannot be read", why=problem.strerror, fix="check its name and rights") from None
-    sheets = [path for path in files if _is_sheet(path)]
+    sheets = [path for path in files if is_sheet(path)]
     if len(sheets) == 1:
         return FoundSamples(
             tuple(read_sheet(sheets[0], radiation=tube, allow_outside=allow_outside)), sheet=sheets[0]
@@ -154,18 +158,18 @@ def samples_in_folder(
     skipped: list[Skipped] = []
     scans: list[Path] = []
     for path in files:
-        if _suffix(path) not in _SCAN_SUFFIXES or re.match(r"(?i)(readme|license|notes?\b)", path.name):
+        if suffix_of(path) not in SCAN_SUFFIXES or re.match(r"(?i)(readme|license|notes?\b)", path.name):
             continue
-        reason = _no_scan(path) if _suffix(path) in _OPEN_SUFFIXES else None
+        reason = _no_scan(path) if suffix_of(path) in _OPEN_SUFFIXES else None
         if reason is None:
             scans.append(path)
         else:
             skipped.append(Skipped(path, reason))
     if not scans:
         raise SheetError(
-            f"{folder}: no scans were found", fix=f"put exports ({', '.join(_SCAN_SUFFIXES)}) or a sample sheet into it"
+            f"{folder}: no scans were found", fix=f"put exports ({', '.join(SCAN_SUFFIXES)}) or a sample sheet into it"
         )
-    return FoundSamples(_entries_by_name(scans, tube), tuple(skipped))
+    return FoundSamples(entries_by_name(scans, tube), tuple(skipped))
 
 
 def _no_scan(path: Path) -> str | None:
@@ -179,7 +183,8 @@ def _no_scan(path: Path) -> str | None:
     return None
 
 
-def _entries_by_name(scans: list[Path], tube: Radiation | None) -> tuple[SampleEntry, ...]:
+def entries_by_name(scans: list[Path], tube: Radiation | None) -> tuple[SampleEntry, ...]:
+    """Samples out of the names of their files."""
     guesses = {path: guess_from_name(path) for path in scans}
     lettered = {guess.sample.lower() for guess in guesses.values() if guess.known and not guess.bare_number}
     rows: dict[str, list[SheetRow]] = {}

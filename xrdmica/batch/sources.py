@@ -8,17 +8,17 @@ from dataclasses import dataclass
 from pathlib import Path
 
 from xrdmica.batch.sheet import (
-    _SCAN_SUFFIXES,
+    SCAN_SUFFIXES,
     FoundSamples,
     SampleEntry,
     Skipped,
-    _entries_by_name,
-    _is_sheet,
-    _natural,
-    _suffix,
-    _tube,
+    entries_by_name,
     entries_from,
+    is_sheet,
+    natural_order,
+    suffix_of,
 )
+from xrdmica.batch.sheet_table import tube_of
 from xrdmica.errors import SheetError
 from xrdmica.radiation import Radiation
 
@@ -78,16 +78,16 @@ def gather(
         matched = [path for path in _expand(text) if not path.name.startswith((".", "~"))]
         explicit = matched == [Path(text)]
         for path in matched:
-            if path.is_dir() or _is_sheet(path) or not path.exists():
+            if path.is_dir() or is_sheet(path) or not path.exists():
                 parts.append((str(path), entries_from(path, radiation=radiation, allow_outside=allow_outside)))
-            elif explicit or _suffix(path) in _SCAN_SUFFIXES:
+            elif explicit or suffix_of(path) in SCAN_SUFFIXES:
                 group = loose.setdefault(path.parent, [])
                 if not any(path.samefile(other) for other in group):
                     group.append(path)
             else:
                 skipped.append(Skipped(path, "its name does not end like that of an export"))
     for folder, files in loose.items():
-        parts.append((str(folder), FoundSamples(_entries_by_name(files, _tube(radiation)))))
+        parts.append((str(folder), FoundSamples(entries_by_name(files, tube_of(radiation)))))
     _no_sample_twice(parts)
     return Gathered(
         tuple(entry for _, found in parts for entry in found),
@@ -102,7 +102,7 @@ def _expand(text: str | Path) -> list[Path]:
     if path.exists() or not glob.has_magic(str(text)):
         return [path]
     # a pattern with ** also matches the folder it starts in
-    found = sorted((Path(name) for name in glob.glob(str(text), recursive=True)), key=lambda p: (str(p.parent), _natural(p)))  # noqa: PTH207
+    found = sorted((Path(name) for name in glob.glob(str(text), recursive=True)), key=lambda p: (str(p.parent), natural_order(p)))  # noqa: PTH207
     if "**" in str(text):
         found = [p for p in found if not p.is_dir()]
     if not found:

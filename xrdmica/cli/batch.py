@@ -27,6 +27,9 @@ _MOST_LINES = 200  # of the table on the screen
 @options.outside_option
 @options.phase_option
 @options.instrument_option
+@options.calibration_option
+@options.formula_option
+@options.joint_option
 @options.workers_option
 @click.option("--scheduler", metavar="ADDRESS|local", help="Compute on a Dask cluster, or on one started on this machine.")
 @click.option("--time-limit", type=click.FloatRange(min=0, min_open=True), metavar="SECONDS",
@@ -59,7 +62,8 @@ def command(
     found = gather(sources, radiation=radiation, allow_outside=allow_outside)
     for skipped in found.skipped:
         click.echo(f"not read: {skipped.file.name}: {' '.join(skipped.reason.split())}", err=True)
-    results, last = _run(found, out, options.settings_from(radiation, phases, instrument), quiet, how)
+    more = {name: how.pop(name) for name in ("width_calibration", "formulas", "joint_chemistry")}
+    results, last = _run(found, out, options.settings_from(radiation, phases, instrument, **more), quiet, how)
     if not quiet:
         _print_table(results, out, len(found))
     if last is not None and (last.failed or (out / "failures.csv").exists()):
