@@ -28,6 +28,7 @@ def make_sample(
     name: str = "simulated",
     radiation: str = "Cu",
     spread: float | None = None,
+    hump: tuple[float, float, float] | None = None,
     exchanges: Mapping[str, tuple[tuple[str, float], ...]] | None = None,
 ) -> Sample:
     """A sample of known weights, scanned after each treatment."""
@@ -50,7 +51,7 @@ def make_sample(
             parts[phase] = component
         settings = MountSettings(
             high=high, peak_counts=peak_counts, displacement=float(rng.normal(0, displacement)), orientation_spread=spread,
-            spread_factors=factors,
+            spread_factors=factors, **({} if hump is None else {"hump": hump}),
         )  # fmt: skip
         scans.append(
             simulate_scan(weights, parts, treatment, settings, rng, radiation=radiation, mount=mount, instrument=instrument)

@@ -67,3 +67,11 @@ def test_nothing_to_fit_gives_no_numbers() -> None:
 def test_fit_is_repeatable() -> None:
     sample = make_sample({"muscovite": 60, "kaolinite": 40}, ("air_dried",), seed=13)
     assert estimate(sample) == estimate(sample)
+
+
+@pytest.mark.parametrize("phase", ["muscovite", "kaolinite", "chlorite", "smectite"])
+def test_single_phases_come_out_as_nearly_all(phase: str) -> None:
+    found = estimate(make_sample({phase: 100}, ("air_dried", "glycolated"), seed=5))
+    row = next(p for p in found.phases if p.phase == phase)
+    assert row.weight_percent is not None
+    assert row.weight_percent >= 97.0

@@ -12,6 +12,7 @@ from xrdmica._version import __version__
 from xrdmica.chemistry.formula import SiteFormula
 from xrdmica.crystals.library import Phase, load_phase
 from xrdmica.diffraction.optics import Instrument, displacement_shift, load_instrument
+from xrdmica.estimate.bootstrap import Bootstrap
 from xrdmica.estimate.proportions import estimate_examined
 from xrdmica.identify.decide import Examination, examine
 from xrdmica.interpret.chemistry_check import check_chemistry, read_analysis
@@ -47,6 +48,10 @@ class Settings:
         Phase ids with their known mineral formulas, which the chemistry check and the fit then keep to.
     joint_chemistry : bool
         Whether the chemistry check gives weights that scans and analysis support together.
+    bootstrap : int
+        Draws of the parametric bootstrap behind the intervals; 0 for intervals from the covariance.
+    seed : int
+        Of the bootstrap.
     """
 
     radiation: str | None = None
@@ -56,15 +61,21 @@ class Settings:
     width_calibration: str | None = None
     formulas: tuple[tuple[str, str], ...] = ()
     joint_chemistry: bool = False
+    bootstrap: int = 0
+    seed: int = 0
 
 
-def analyse_sample(sample: Sample, settings: Settings | None = None) -> SampleResult:
+def analyse_sample(
+    sample: Sample, settings: Settings | None = None, *, on_draw: Callable[[int, int], None] | None = None
+) -> SampleResult:
     """Identify and estimate one sample, and give the verdict on swelling.
 
     Parameters
     ----------
     sample : Sample
     settings : Settings, optional
+    on_draw : callable, optional
+        Called with (draws done, draws) of a bootstrap.
 
     Returns
     -------
@@ -81,7 +92,8 @@ def analyse_sample(sample: Sample, settings: Settings | None = None) -> SampleRe
     phases: list[Phase] | None = [load_phase(name) for name in chosen.phases] or None
     examination = examine(sample, phases, instrument)
     known = {phase: SiteFormula.parse(text) for phase, text in chosen.formulas}
-    estimate = estimate_examined(examination, known)
+    draws = Bootstrap(chosen.bootstrap, chosen.seed, on_draw) if chosen.bootstrap > 0 else None
+    estimate = estimate_examined(examination, known, draws)
     findings = examination.findings
     summaries = tuple(
         summary if moved is None else summary.model_copy(update={"displacement_mm": round(moved, 3)})

@@ -30,6 +30,7 @@ _MOST_LINES = 200  # of the table on the screen
 @options.calibration_option
 @options.formula_option
 @options.joint_option
+@options.bootstrap_options
 @options.workers_option
 @click.option("--scheduler", metavar="ADDRESS|local", help="Compute on a Dask cluster, or on one started on this machine.")
 @click.option("--time-limit", type=click.FloatRange(min=0, min_open=True), metavar="SECONDS",
@@ -62,7 +63,8 @@ def command(
     found = gather(sources, radiation=radiation, allow_outside=allow_outside)
     for skipped in found.skipped:
         click.echo(f"not read: {skipped.file.name}: {' '.join(skipped.reason.split())}", err=True)
-    more = {name: how.pop(name) for name in ("width_calibration", "formulas", "joint_chemistry")}
+    more = {name: how.pop(name) for name in ("width_calibration", "formulas", "joint_chemistry", "seed")}
+    more["bootstrap"] = how.pop("bootstrap") or 0
     results, last = _run(found, out, options.settings_from(radiation, phases, instrument, **more), quiet, how)
     if not quiet:
         _print_table(results, out, len(found))

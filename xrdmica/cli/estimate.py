@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from pathlib import Path
 
 import click
@@ -21,6 +22,7 @@ __all__ = ["command"]
 @options.calibration_option
 @options.formula_option
 @options.joint_option
+@options.bootstrap_options
 @options.json_option
 @options.csv_option
 @options.figure_option
@@ -36,6 +38,8 @@ def command(
     width_calibration: str | None,
     formulas: tuple[tuple[str, str], ...],
     joint_chemistry: bool,
+    bootstrap: int | None,
+    seed: int,
     json_file: Path | None,
     csv_file: Path | None,
     figure_file: Path | None,
@@ -58,8 +62,9 @@ def command(
     settings = options.settings_from(
         radiation, phases, instrument, curves=figure_file is not None or json_file is not None,
         width_calibration=width_calibration, formulas=formulas, joint_chemistry=joint_chemistry,
+        bootstrap=bootstrap or 0, seed=seed,
     )  # fmt: skip
-    results, failed = of_each(entries, lambda scans: analyse_sample(scans, settings))
+    results, failed = of_each(entries, lambda scans: analyse_sample(scans, settings, on_draw=_told(scans.name)))
     # files first: a reader of the table may go away (`| head`)
     if json_file is not None:
         write_text(json_file, options.json_of([result_text(result) for result in results], single=len(entries) == 1))
@@ -79,3 +84,13 @@ def command(
         result_table(result, console)
     if failed:
         ctx.exit(1)
+
+
+def _told(sample: str) -> Callable[[int, int], None]:
+    """Tells every tenth draw of a bootstrap on stderr."""
+
+    def tell(done: int, total: int) -> None:
+        if done == total or done % 10 == 0:
+            click.echo(f"{sample}: {done} of {total} draws", err=True)
+
+    return tell

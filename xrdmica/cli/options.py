@@ -14,9 +14,9 @@ if TYPE_CHECKING:
     from xrdmica.batch.analyse import Settings
 
 __all__ = [
-    "calibration_option", "csv_option", "figure_option", "file_option", "formula_option", "instrument_option", "joint_option",
-    "json_of", "json_option", "outside_option",
-    "paths_argument", "phase_option", "radiation_option", "sample_option", "settings_from", "workers_option",
+    "bootstrap_options", "calibration_option", "csv_option", "figure_option", "file_option", "formula_option",
+    "instrument_option", "joint_option", "json_of", "json_option", "outside_option", "paths_argument",
+    "phase_option", "radiation_option", "sample_option", "settings_from", "workers_option",
 ]  # fmt: skip
 
 Command = TypeVar("Command", bound=Callable[..., Any])
@@ -115,6 +115,15 @@ def formula_option(command: Command) -> Command:
         "--formula", "formulas", metavar="PHASE=FORMULA", multiple=True, callback=_formulas,
         help="Mineral formula known otherwise, such as \"biotite=K(Mg1.5Fe2+1.5)(Si3Al)O10(OH)2\"; may be given several times.",
     )(command)  # fmt: skip
+
+
+def bootstrap_options(command: Command) -> Command:
+    """``--bootstrap`` and ``--seed``: intervals from scans drawn again."""
+    seed = click.option("--seed", type=click.IntRange(min=0), default=0, show_default=True, help="Fixes what a bootstrap draws.")
+    draws = click.option(
+        "--bootstrap", type=click.IntRange(min=20), metavar="N", help="Intervals from N sets of scans drawn and fitted again."
+    )
+    return draws(seed(command))
 
 
 def joint_option(command: Command) -> Command:

@@ -12,6 +12,7 @@ from numpy.typing import NDArray
 
 from xrdmica.crystals.layer import Layer, build_layer
 from xrdmica.crystals.library import Phase, State, load_phase
+from xrdmica.crystals.polytype import structured_polytype
 from xrdmica.diffraction.bands import band_intensity
 from xrdmica.diffraction.basal import basal_intensity
 from xrdmica.diffraction.grid import PatternGrid, Sampling, on_scan, sample_points
@@ -27,6 +28,11 @@ from xrdmica.scans.treatment import Treatment
 __all__ = ["Component", "ExpectedLine", "View", "component_column", "component_columns", "components_for", "expected_lines"]
 
 _TYPICAL_LAYERS = 20.0
+
+
+_GRAIN = 600.0  # angstrom, size of companion crystals where nothing is known
+_LATERAL = 500.0  # angstrom, extent of clay plates, common practice
+_MOST_STRETCH = 0.03  # beyond this a state is another structure (hydrated, collapsed), not a stretched one
 
 
 @dataclass(frozen=True)
@@ -83,6 +89,8 @@ class View:
         Instrument width [degree] in place of the instrument's own.
     mass_attenuation, mass_mg_cm2 : float or None
         Of a film that does not stop the beam [cm^2/g, mg/cm^2]; thick without both.
+    march : float
+        March-Dollase ratio of the plates of a random mount; below 1 they lie flat more often than not.
     """
 
     grid: PatternGrid
@@ -93,6 +101,7 @@ class View:
     fwhm: float | None = None
     mass_attenuation: float | None = None
     mass_mg_cm2: float | None = None
+    march: float = 1.0
 
     @property
     def spread(self) -> float:
@@ -277,7 +286,8 @@ def component_columns(
     layered = [i for i, component in enumerate(components) if component is not None and component.states]
     if layered:
         curves = np.array([component_intensity(components[i], view.grid, model) for i in layered])
-        out[:, layered] = view.seen(curves).T
+        # plates that lie flat bring their normals into reflection: r^-3 for lines along the normal (Dollase 1986)
+        out[:, layered] = view.seen(curves).T * (view.march**-3.0 if view.mount == "random" else 1.0)
     for i, component in enumerate(components):
         if component is not None and (view.mount == "random" or not component.states):
             out[:, i] += _crossed(component, view, model)
@@ -294,17 +304,41 @@ def _crossed(component: Component, view: View, model: FormFactors) -> NDArray[np
     lines = cross_lines(component, view, model)
     if lines is None:
         return _banded(component, view, model)
+    thick = _GRAIN if not component.states else component.mean_layers * component.spacings[0]
+    plates = bool(component.states)
     return powder_profile(
-        lines,
+        _stretched(component, lines) if plates else lines,
         view.two_theta,
         view.grid.radiation,
         view.grid.instrument,
-        size=600.0 if not component.states else component.mean_layers * component.spacings[0],
+        size=max(thick, _LATERAL) if plates else thick,
+        basal_size=thick,
+        march=view.march if plates else 1.0,
         displacement=view.displacement,
         fwhm=view.width,
         mass_attenuation=view.mass_attenuation,
         mass_mg_cm2=view.mass_mg_cm2,
     )
+
+
+@lru_cache(maxsize=256)
+def _published_spacing(name: str) -> float:
+    """Thickness of one layer in the published cell that cross lines come from [angstrom]."""
+    from pymatgen.core.lattice import Lattice
+
+    polytype = structured_polytype(load_phase(name))
+    return float(Lattice.from_parameters(*polytype.cell).d_hkl((0, 0, 1))) / polytype.layers_per_cell
+
+
+def _stretched(component: Component, lines: Reflections) -> Reflections:
+    """Lines of the published cell moved to the basal spacing of the component: 1/d along the normal scales with it."""
+    if component.fraction is not None:
+        return lines
+    ratio = _published_spacing(component.phase) / component.spacings[0]
+    if abs(ratio - 1) < 1e-5 or abs(ratio - 1) > _MOST_STRETCH:
+        return lines
+    scaled = lines.d_spacing / np.sqrt(1.0 - lines.tilt + lines.tilt * ratio**2)
+    return replace(lines, d_spacing=scaled)
 
 
 def turbostratic_kinds(component: Component) -> dict[str, float]:
@@ -322,7 +356,8 @@ def _banded(component: Component, view: View, model: FormFactors) -> NDArray[np.
     kinds = turbostratic_kinds(component)
     if not kinds:
         return np.zeros(view.two_theta.size)
-    curve = band_intensity(kinds, view.grid, model=model)
+    # rods stand upright on the plates: the factor of lines at a right angle to the normal
+    curve = band_intensity(kinds, view.grid, model=model) * view.march**1.5
     if view.mass_attenuation is not None and view.mass_mg_cm2 is not None:
         curve = curve * film_factor(view.grid.two_theta, view.mass_attenuation, view.mass_mg_cm2)
     smeared = convolve_profile(curve, view.grid.step, view.width, view.grid.instrument.lorentzian)

@@ -6,7 +6,6 @@ from collections.abc import Sequence
 
 import numpy as np
 
-from xrdmica.crystals.library import load_phase
 from xrdmica.diffraction.columns import expected_lines
 from xrdmica.diffraction.optics import displacement_shift
 from xrdmica.matching.prepare import Prepared
@@ -52,11 +51,12 @@ def fitted_curves(fitted: Fitted) -> tuple[Curve, ...]:
         found = np.linalg.lstsq(terms / size, rest * item.weight, rcond=1e-10)[0] / size
         smooth = item.smooth @ found[: item.smooth.shape[1]]
         strange = np.asarray(item.strange @ found[item.smooth.shape[1] :])
-        shown = {
-            load_phase(c.phase).id: _rounded(parts[:, j])
-            for j, c in enumerate(fitted.model.candidates)
-            if evaluation.amounts[j] > 0
-        }
+        summed: dict[str, np.ndarray[tuple[int], np.dtype[np.float64]]] = {}
+        for j, one in enumerate(fitted.model.candidates):
+            # a companion may be two candidates, one per kind of mount
+            if evaluation.amounts[j] > 0 and one.components[k] is not None:
+                summed[one.phase] = summed.get(one.phase, np.zeros(parts.shape[0])) + parts[:, j]
+        shown = {phase: _rounded(values) for phase, values in summed.items()}
         if strange.size and float(np.abs(strange).sum()) > _VISIBLE * float(np.abs(parts).sum()):
             shown[STRANGERS] = _rounded(strange)
         out.append(

@@ -9,16 +9,21 @@ import numpy as np
 from numpy.typing import NDArray
 
 from xrdmica.chemistry.formula import SiteFormula
-from xrdmica.crystals.layer import exchanges_of
 from xrdmica.crystals.library import load_phase
 from xrdmica.diffraction.columns import components_for
 from xrdmica.diffraction.optics import Instrument
+from xrdmica.estimate.bootstrap import Bootstrap, drawn_amounts, shifted_limits
+from xrdmica.estimate.crystal_chemistry import crystal_chemistry
 from xrdmica.estimate.curves import STRANGERS, bare_curves, fitted_curves
-from xrdmica.estimate.shares import TOTALS, Shares, expandable_share, membership, normalise
+from xrdmica.estimate.fitting import fit_examined
+from xrdmica.estimate.quality import fit_warnings
+from xrdmica.estimate.rows import group_rows, hidden_share, percent, phase_rows, unaccounted_row
+from xrdmica.estimate.shares import Shares, expandable_share, normalise
+from xrdmica.estimate.standard import added_standard, standard_place, whole_sample
 from xrdmica.estimate.uncertainty import detection_limits, fit_covariance, model_shifts
 from xrdmica.identify.decide import Examination, examine
-from xrdmica.matching.model import Candidate, build_model, composition_shows
-from xrdmica.matching.solve import Fitted, fit_model
+from xrdmica.matching.model import Candidate
+from xrdmica.matching.solve import Fitted
 from xrdmica.results import (
     Basis,
     Curve,
@@ -26,21 +31,18 @@ from xrdmica.results import (
     FitQuality,
     FittedParameter,
     GroupWeight,
-    PhaseFinding,
     PhaseWeight,
     Proportions,
-    Status,
 )
 from xrdmica.scans.scan import Sample
 
 __all__ = ["Estimate", "estimate", "estimate_examined"]
 
 FloatArray = NDArray[np.float64]
-_Z95 = 1.959964
 _STRANGE_LIMIT = 0.15  # share of unassigned line intensity beyond which percentages of a powder would mean nothing
 _POOR_FIT = 8.0  # reduced chi-square of a powder beyond which the same holds
 _UNITS = {"spacing": "angstrom", "layers": "layers", "fraction": "share", "exchange": "apfu", "spread": "degree",
-          "width": "factor", "displacement": "mm"}
+          "width": "factor", "march": "ratio", "displacement": "mm"}
 
 
 @dataclass(frozen=True, eq=False)
@@ -68,30 +70,10 @@ def _basis(sample: Sample) -> Basis:
     return "sheet silicates of the oriented mount" if oriented else "crystalline part"
 
 
-def _fit(examination: Examination, known: Mapping[str, SiteFormula]) -> Fitted | None:
-    arena, selection = examination.arena, examination.selection
-    if not selection.active:
-        return None
-    start = [item.spread(item.view.orientation_spread * selection.factor) for item in arena.prepared]
-    chosen = [arena.candidates[a] for a in selection.active]
-    chosen = [_with_formula(one, known[one.phase]) if one.phase in known else one for one in chosen]
-    return fit_model(build_model(start, chosen, exchanges=composition_shows(chosen), known=tuple(known)))
-
-
-def _with_formula(candidate: Candidate, formula: SiteFormula) -> Candidate:
-    """The candidate with the composition of a known mineral formula."""
-    exchanges = tuple(exchanges_of(load_phase(candidate.phase), formula).items())
-    components = tuple(
-        one if one is None or not one.states or one.fraction is not None else replace(one, exchanges=exchanges)
-        for one in candidate.components
-    )
-    return replace(candidate, components=components)
-
-
 def _parameters(fitted: Fitted, errors: FloatArray) -> tuple[FittedParameter, ...]:
     out = []
     for knob, value, error in zip(fitted.model.knobs, fitted.evaluation.values, errors, strict=True):
-        logarithmic = knob.kind in ("layers", "spread", "width")
+        logarithmic = knob.kind in ("layers", "spread", "width", "march")
         shown = float(np.exp(value)) if logarithmic else float(value)
         owner = "" if knob.phase < 0 else f"{fitted.model.candidates[knob.phase].phase} "
         where = f" {fitted.model.prepared[knob.scans[0]].label}" if knob.kind == "displacement" else ""
@@ -102,6 +84,7 @@ def _parameters(fitted: Fitted, errors: FloatArray) -> tuple[FittedParameter, ..
         at_limit = not knob.low + edge < value < knob.high - edge
         error_shown = float(error * shown) if logarithmic else float(error)
         words = {"layers": "mean layers", "spread": "orientation spread", "width": "instrument width",
+                 "march": "March-Dollase ratio of the powder",
                  "exchange": "content of", "fraction": "share of first layer"}.get(knob.kind, knob.kind)
         out.append(
             FittedParameter(
@@ -129,14 +112,6 @@ def _quality(fitted: Fitted) -> FitQuality:
     )
 
 
-def _interval(value: float, error: float) -> tuple[float, float]:
-    return max(value - _Z95 * error, 0.0), min(value + _Z95 * error, 1.0)
-
-
-def _percent(value: float | None) -> float | None:
-    return None if value is None or not np.isfinite(value) else round(100 * float(value), 2)
-
-
 def _outsiders(examination: Examination) -> list[Candidate]:
     """Sheet silicates that the fit does not hold, as they would look, for their detection limits."""
     fitted = {examination.arena.candidates[a].phase for a in examination.selection.active}
@@ -152,87 +127,6 @@ def _outsiders(examination: Examination) -> list[Candidate]:
     return out
 
 
-def _rows(
-    findings: Findings, shares: Shares, names: Sequence[str], errors: FloatArray, limits: dict[str, float]
-) -> tuple[PhaseWeight, ...]:
-    """One row per phase considered: weights for the fitted ones, ranges from zero for what could stand in for them."""
-    place = {names[p]: i for i, p in enumerate(shares.places)}
-    highs = {name: _interval(float(shares.weights[i]), float(errors[i]))[1] for name, i in place.items()}
-    rows = []
-    for finding in findings.phases:
-        weight = low = high = error = None
-        if finding.phase in place:
-            i = place[finding.phase]
-            weight, error = float(shares.weights[i]), float(errors[i])
-            low, high = _interval(weight, error)
-            if finding.status == "possible":
-                low = 0.0
-            if len(place) == 1 and weight == 1.0:
-                # a single phase: what could hide below its detection limit is the uncertainty
-                low = 1.0 - _hidden(findings, limits)
-        elif finding.status == "possible":
-            low, high = 0.0, max((highs[a.phase] for a in finding.alternatives if a.phase in highs), default=None)
-        rows.append(
-            PhaseWeight(
-                phase=finding.phase, name=finding.name, group=finding.group, status=finding.status,
-                weight_percent=_percent(weight), low95=_percent(low), high95=_percent(high), standard_error=_percent(error),
-                detection_limit=_percent(limits.get(finding.phase)),
-            )
-        )
-    return tuple(rows)
-
-
-def _hidden(findings: Findings, limits: dict[str, float]) -> float:
-    common = [
-        limits.get(f.phase, float("nan"))
-        for f in findings.phases
-        if f.status == "not_detected" and load_phase(f.phase).occurrence == "common"
-    ]
-    return min(max((value for value in common if np.isfinite(value)), default=0.0), 1.0)
-
-
-def _group_status(members: Sequence[PhaseFinding], groups: dict[str, str]) -> Status:
-    statuses = {m.status for m in members}
-    if "present" in statuses:
-        return "present"
-    if "trace" in statuses:
-        return "trace"
-    own = {m.group for m in members}
-    for member in members:
-        rivals = {groups.get(a.phase, "") for a in member.alternatives}
-        if member.status == "possible" and member.convincing and rivals <= own:
-            return "present"
-    return "possible" if "possible" in statuses else "not_detected"
-
-
-def _groups(
-    findings: Findings, shares: Shares | None, names: Sequence[str], covariance: FloatArray, expandable: dict[str, float],
-    hidden: float = 0.0,
-) -> tuple[GroupWeight, ...]:
-    groups = {f.phase: f.group for f in findings.phases}
-    rows = []
-    for total in TOTALS:
-        members = [
-            f for f in findings.phases
-            if (expandable.get(f.phase, 0.0) > 0 if total == "expandable layers" else f.group == total)
-        ]
-        status = _group_status(members, groups) if members else "not_detected"
-        weight = low = high = None
-        if shares is not None and status != "not_detected":
-            counted = membership(total, [names[p] for p in shares.places], expandable)
-            value = float(counted @ shares.weights)
-            if value > 0:
-                error = float(np.sqrt(max(float(counted @ covariance @ counted), 0.0)))
-                weight, (low, high) = value, _interval(value, error)
-                if value == 1.0 and error == 0.0:
-                    low = 1.0 - hidden
-                low = 0.0 if status == "possible" else low
-        rows.append(
-            GroupWeight(group=total, status=status, weight_percent=_percent(weight), low95=_percent(low), high95=_percent(high))
-        )
-    return tuple(rows)
-
-
 def _strange_share(curves: Sequence[Curve]) -> float:
     """Share of all line intensity that no phase of the library takes."""
     strange = sum(max(sum(curve.contributions.get(STRANGERS, ())), 0.0) for curve in curves)
@@ -243,10 +137,12 @@ def _strange_share(curves: Sequence[Curve]) -> float:
 def _notes(sample: Sample, fitted: Fitted | None, basis: Basis, strange: float = 0.0) -> tuple[str, ...]:
     notes = [
         "weights are on a dry basis: structural OH counts, interlayer water and glycol do not",
-        f"100 % is: {basis}; what gives no lines (amorphous matter) is not in it",
+        f"100 % is: {basis}; "
+        + ("what gives no lines is in the row unaccounted" if basis == "whole sample" else
+           "what gives no lines (amorphous matter) is not in it"),
     ]
     if basis.startswith("sheet") and fitted is not None:
-        others = [c.phase for c in fitted.model.candidates if not load_phase(c.phase).is_sheet_silicate]
+        others = {c.phase for c in fitted.model.candidates if not load_phase(c.phase).is_sheet_silicate}
         if others:
             notes.append(f"seen, but outside the 100 % of an oriented mount: {', '.join(sorted(others))}")
     if strange > 0.02:
@@ -281,14 +177,16 @@ def _nothing(examination: Examination, basis: Basis) -> Estimate:
     rows = tuple(PhaseWeight(phase=f.phase, name=f.name, group=f.group, status=f.status) for f in findings.phases)
     proportions = Proportions(
         sample=findings.sample, basis=basis, phases=rows,
-        groups=_groups(findings, None, (), np.zeros((0, 0)), _expandable(examination, None)),
+        groups=group_rows(findings, None, (), np.zeros((0, 0)), _expandable(examination, None)),
         quality=FitQuality(message="nothing to fit"), notes=_notes(examination.sample, None, basis),
     )
     prepared = examination.arena.prepared
     return Estimate(proportions, bare_curves(prepared), None, tuple(None for _ in prepared))
 
 
-def estimate_examined(examination: Examination, known: Mapping[str, SiteFormula] | None = None) -> Estimate:
+def estimate_examined(
+    examination: Examination, known: Mapping[str, SiteFormula] | None = None, bootstrap: Bootstrap | None = None
+) -> Estimate:
     """Fit all scans of an examined sample together and report proportions.
 
     Parameters
@@ -297,47 +195,148 @@ def estimate_examined(examination: Examination, known: Mapping[str, SiteFormula]
         From `xrdmica.identify.decide.examine`.
     known : mapping, optional
         Phase id -> mineral formula known otherwise (microprobe); the fit keeps to it.
+    bootstrap : Bootstrap, optional
+        Intervals from scans drawn again, in place of those from the covariance.
 
     Returns
     -------
     Estimate
+
+    Raises
+    ------
+    XrdmicaError
+        If the sheet names a standard that cannot be used.
     """
-    basis = _basis(examination.sample)
-    fitted = _fit(examination, known or {})
+    sample = examination.sample
+    standard = added_standard(sample)
+    basis = _basis(sample)
+    fitted = fit_examined(examination, known or {})
     if fitted is None:
         return _nothing(examination, basis)
     names = [c.phase for c in fitted.model.candidates]
-    counted = [
-        j for j, name in enumerate(names)
-        if fitted.evaluation.amounts[j] > 0 and (load_phase(name).is_sheet_silicate or basis == "crystalline part")
-    ]
-    amount_covariance, knob_errors = fit_covariance(fitted)
     curves = fitted_curves(fitted)
     strange = _strange_share(curves)
-    poor = strange > _STRANGE_LIMIT or fitted.reduced_chi_square > _POOR_FIT
-    weighable = bool(counted) and not (basis == "crystalline part" and poor)
-    shares = normalise(fitted.evaluation.amounts, amount_covariance, counted) if weighable else None
-    covariance = np.zeros((0, 0))
-    rows: tuple[PhaseWeight, ...]
-    outside = _outsiders(examination)
-    inside, extra = detection_limits(fitted, outside, counted) if counted else (np.zeros(0), np.zeros(0))
-    limits = dict(zip([*names, *(c.phase for c in outside)], [*inside.tolist(), *extra.tolist()], strict=True)) if counted else {}
-    if shares is None:
-        rows = _nothing(examination, basis).proportions.phases
-    else:
-        shifts = model_shifts(fitted, counted)
-        covariance = shares.covariance + shifts.T @ shifts
-        errors = np.sqrt(np.maximum(np.diag(covariance), 0.0))
-        rows = _rows(examination.findings, shares, names, errors, limits)
-    hidden = _hidden(examination.findings, limits)
-    groups = _groups(examination.findings, shares, names, covariance, _expandable(examination, fitted), hidden)
+    amount_covariance, knob_errors = fit_covariance(fitted)
+    weighed = _weigh(fitted, names, basis, standard, amount_covariance, strange)
+    rows, groups = _tables(examination, fitted, names, weighed)
+    if bootstrap is not None and weighed.shares is not None:
+        rows = _redrawn(rows, fitted, names, weighed, bootstrap, standard, sample.name)
+        drawn = f"intervals from {bootstrap.count} bootstrap draws, seed {bootstrap.seed}"
+        weighed = replace(weighed, notes=(*weighed.notes, drawn))
     proportions = Proportions(
-        sample=examination.findings.sample, basis=basis, phases=rows, groups=groups,
-        parameters=_parameters(fitted, knob_errors), quality=_quality(fitted),
-        notes=_notes(examination.sample, fitted, basis, strange),
+        sample=examination.findings.sample, basis=weighed.basis, phases=rows, groups=groups,
+        parameters=(*_parameters(fitted, knob_errors), *crystal_chemistry(fitted, knob_errors)), quality=_quality(fitted),
+        warnings=fit_warnings(fitted, examination.findings, sample.labels, strange),
+        notes=(*_notes(sample, fitted, weighed.basis, strange), *weighed.notes),
     )
     displacements = tuple(view.displacement for view in fitted.evaluation.views)
     return Estimate(proportions, curves, fitted, displacements)
+
+
+def _redrawn(
+    rows: Sequence[PhaseWeight], fitted: Fitted, names: Sequence[str], weighed: _Weighed, bootstrap: Bootstrap,
+    standard: tuple[str, float] | None, sample: str,
+) -> tuple[PhaseWeight, ...]:
+    """The rows with intervals by the bootstrap, combined with what drawing scans again does not vary."""
+    assert weighed.shares is not None
+    amounts = drawn_amounts(fitted, bootstrap, sample)
+    places = list(weighed.shares.places)
+    total = amounts[:, places].sum(axis=1)
+    if weighed.basis == "whole sample" and standard is not None:
+        own = [j for j in range(len(names)) if names[j] == standard[0] and fitted.evaluation.amounts[j] > 0]
+        total = amounts[:, own[0]] * (1 - standard[1]) / standard[1]
+    draws = amounts[:, places] / np.maximum(total, 1e-300)[:, None]
+    other = np.sqrt(np.maximum(np.diag(weighed.covariance - weighed.counting), 0.0))
+    found = {names[j]: i for i, j in enumerate(places)}
+    out = []
+    for row in rows:
+        i = found.get(row.phase)
+        if i is None or row.weight_percent is None:
+            out.append(row)
+            continue
+        low, high = shifted_limits(float(weighed.shares.weights[i]), draws[:, i], float(other[i]))
+        error = float(np.hypot(draws[:, i].std(ddof=1), other[i]))
+        low = 0.0 if row.status == "possible" else low
+        out.append(row.model_copy(update={
+            "low95": percent(low), "high95": percent(high), "standard_error": percent(error),
+        }))  # fmt: skip
+    return tuple(out)
+
+
+@dataclass(frozen=True, eq=False)
+class _Weighed:
+    """Weights with everything that is not sure about them.
+
+    `counted` are the candidates in the 100 %; `shares` is None when they cannot be weighed; `unaccounted` is the rest of a
+    whole sample with its error; `counting` is the part of the covariance that comes from the fit.
+    """
+
+    basis: Basis
+    counted: list[int]
+    shares: Shares | None
+    covariance: FloatArray
+    counting: FloatArray
+    unaccounted: tuple[float, float] | None = None
+    notes: tuple[str, ...] = ()
+
+
+def _weigh(
+    fitted: Fitted, names: Sequence[str], basis: Basis, standard: tuple[str, float] | None, amount_covariance: FloatArray,
+    strange: float,
+) -> _Weighed:
+    """Normalise the fitted amounts: to the sheet silicates, to the crystalline part, or by a standard to the whole sample."""
+    amounts = fitted.evaluation.amounts
+    mounts = [item.scan.mount for item in fitted.model.prepared]
+    powder = [
+        j for j, one in enumerate(fitted.model.candidates)
+        if amounts[j] > 0 and any(c is not None and m == "random" for c, m in zip(one.components, mounts, strict=True))
+    ]
+    plates = [j for j, name in enumerate(names) if amounts[j] > 0 and load_phase(name).is_sheet_silicate]
+    by_standard = standard is not None and any(names[j] == standard[0] for j in powder)
+    counted = powder if by_standard or basis == "crystalline part" else plates
+    empty = np.zeros((0, 0))
+    poor = strange > _STRANGE_LIMIT or fitted.reduced_chi_square > _POOR_FIT
+    if not counted or (poor and (by_standard or basis == "crystalline part")):
+        return _Weighed(basis, counted, None, empty, empty)
+    shares = normalise(amounts, amount_covariance, counted)
+    shifts = model_shifts(fitted, counted)
+    covariance = shares.covariance + shifts.T @ shifts
+    if standard is None:
+        return _Weighed(basis, counted, shares, covariance, shares.covariance)
+    place = standard_place(shares, names, standard[0]) if by_standard else None
+    if place is None:
+        return _Weighed(basis, counted, shares, covariance, shares.covariance, notes=(
+            f"the added standard {standard[0]} was not found in a random mount: no scale for the whole sample",
+        ))  # fmt: skip
+    _, counting, _, _ = whole_sample(shares, shares.covariance, place, standard[1])
+    whole, covariance, rest, error = whole_sample(shares, covariance, place, standard[1])
+    notes = [f"scaled by {100 * standard[1]:g} % {load_phase(standard[0]).name} added; the standard itself is not in the 100 %"]
+    if rest < -2 * error:
+        notes.append("the phases come to more than 100 % of the sample: check standard_percent and the mixing")
+    return _Weighed("whole sample", list(whole.places), whole, covariance, counting, (rest, error), tuple(notes))
+
+
+def _tables(
+    examination: Examination, fitted: Fitted, names: Sequence[str], weighed: _Weighed
+) -> tuple[tuple[PhaseWeight, ...], tuple[GroupWeight, ...]]:
+    """Rows per phase, the unaccounted part among them, and per group."""
+    findings, counted = examination.findings, weighed.counted
+    outside = _outsiders(examination)
+    limits: dict[str, float] = {}
+    if counted:
+        inside, extra = detection_limits(fitted, outside, counted)
+        limits = dict(zip([*names, *(c.phase for c in outside)], [*inside.tolist(), *extra.tolist()], strict=True))
+    rows: tuple[PhaseWeight, ...]
+    if weighed.shares is None:
+        rows = _nothing(examination, weighed.basis).proportions.phases
+    else:
+        errors = np.sqrt(np.maximum(np.diag(weighed.covariance), 0.0))
+        rows = phase_rows(findings, weighed.shares, names, errors, limits, closed=weighed.unaccounted is None)
+    if weighed.unaccounted is not None:
+        rows = (*rows, unaccounted_row(*weighed.unaccounted))
+    hidden = hidden_share(findings, limits)
+    expandable = _expandable(examination, fitted)
+    return rows, group_rows(findings, weighed.shares, names, weighed.covariance, expandable, hidden)
 
 
 def estimate(sample: Sample, findings: Findings | None = None, instrument: Instrument | None = None) -> Proportions:

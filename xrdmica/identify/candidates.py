@@ -132,6 +132,13 @@ def hopefuls(phases: Sequence[Phase], prepared: Sequence[Prepared]) -> tuple[Hop
     """
     out = []
     for phase in phases:
-        options, lines, met = zip(*(_consider(phase, item) for item in prepared), strict=True)
+        considered = [_consider(phase, item) for item in prepared]
+        if not phase.is_sheet_silicate and any(item.scan.mount == "random" for item in prepared):
+            # coarse companions may stay out of an oriented clay mount: not being there says nothing
+            considered = [
+                one if one[2] or item.scan.mount == "random" else ((), (), False)
+                for one, item in zip(considered, prepared, strict=True)
+            ]
+        options, lines, met = zip(*considered, strict=True)
         out.append(Hopeful(phase, options, lines, met))
     return tuple(out)

@@ -9,7 +9,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from xrdmica.crystals.library import Phase, load_phase
-from xrdmica.diffraction.columns import Component, View, component_column, component_columns, component_intensity, cross_lines
+from xrdmica.diffraction.columns import Component, View, component_column, component_columns, component_intensity
 from xrdmica.diffraction.optics import displacement_shift, lorentz_factor
 from xrdmica.matching.prepare import Prepared
 
@@ -19,6 +19,7 @@ FloatArray = NDArray[np.float64]
 SPREAD_LIMITS = (4.0, 40.0)  # degree
 DISPLACEMENT_LIMIT = 0.6  # mm
 _EXCHANGE_GROUPS = ("true mica", "chlorite")
+_MARCH_LIMITS = (0.35, 1.5)  # ratios met in back-loaded and side-loaded powders, common practice
 _WIDTH_LIMITS = (0.3, 1.8)  # factor on the instrument width seen by the peaks
 
 
@@ -57,9 +58,9 @@ class Knob:
     name : str
         A valid identifier.
     kind : str
-        ``spread``, ``width``, ``displacement``, ``spacing``, ``layers``, ``fraction`` or ``exchange``.
+        ``spread``, ``march``, ``width``, ``displacement``, ``spacing``, ``layers``, ``fraction`` or ``exchange``.
     value, low, high : float
-        Start and limits; layers, spread and width as logarithms.
+        Start and limits; layers, spread, March ratio and width as logarithms.
     prior : float or None
         Standard deviation of what is known beforehand around `centre`; None for nothing.
     centre : float
@@ -99,12 +100,15 @@ class SampleModel:
     def views(self, values: FloatArray) -> tuple[View, ...]:
         """How each scan looks at its specimen for given parameter values."""
         spread = width = None
+        march = 1.0
         moved = {}
         for knob, value in zip(self.knobs, values, strict=True):
             if knob.kind == "spread":
                 spread = float(np.exp(value))
             elif knob.kind == "width":
                 width = float(np.exp(value))
+            elif knob.kind == "march":
+                march = float(np.exp(value))
             elif knob.kind == "displacement":
                 moved[knob.scans[0]] = float(value)
         out = []
@@ -116,6 +120,7 @@ class SampleModel:
                     orientation_spread=view.orientation_spread if spread is None else spread,
                     fwhm=view.width if width is None else view.width * width,
                     displacement=moved.get(k, view.displacement),
+                    march=march if view.mount == "random" else 1.0,
                 )
             )
         return tuple(out)
@@ -246,6 +251,10 @@ def build_model(
         value = float(np.log(prepared[0].view.orientation_spread))
         oriented = tuple(k for k, item in enumerate(prepared) if item.scan.mount == "oriented")
         knobs.append(Knob("spread", "spread", value, low, high, 0.35, float(np.log(12.0)), -1, oriented))
+    powders = tuple(k for k, item in enumerate(prepared) if item.scan.mount == "random")
+    if powders and any(load_phase(candidate.phase).is_sheet_silicate for candidate in candidates):
+        low, high = np.log(_MARCH_LIMITS[0]), np.log(_MARCH_LIMITS[1])
+        knobs.append(Knob("march", "march", -0.02, low, high, 0.25, 0.0, -1, powders))
     everywhere = tuple(range(len(prepared)))
     knobs.append(Knob("width", "width", 0.0, np.log(_WIDTH_LIMITS[0]), np.log(_WIDTH_LIMITS[1]), 0.7, 0.0, -1, everywhere))
     for k, item in enumerate(prepared):
@@ -339,6 +348,9 @@ def _instrument_derivative(model: SampleModel, evaluation: Evaluation, knob: Kno
         new = lorentz_factor(two_theta, spread * np.exp(step), instrument)
         return np.asarray(moved * (new / lorentz_factor(two_theta, spread, instrument) - 1) / step)
     step = 0.02
+    if knob.kind == "march":
+        turned_view = replace(view, march=view.march * float(np.exp(step)))
+        return np.asarray((_total(model, evaluation, k, turned_view) - total) / step)
     wider = replace(view, fwhm=view.width * float(np.exp(step)))
     return np.asarray((_total(model, evaluation, k, wider) - total) / step)
 
@@ -351,8 +363,7 @@ def _total(model: SampleModel, evaluation: Evaluation, k: int, view: View) -> Fl
         component = model.component(j, k, evaluation.values)
         if amount <= 0 or component is None:
             continue
-        crossed = view.mount == "random" or not component.states
-        if crossed and cross_lines(component, view) is not None:
+        if view.mount == "random" or not component.states:
             rest += amount * component_column(component, view)
         else:
             curve += amount * component_intensity(component, view.grid)

@@ -18,6 +18,7 @@ __all__ = ["Prepared", "background_terms", "orthonormal", "prepare", "prepare_sc
 
 _WINDOWS = {"oriented": (36.0, 1.80), "random": (36.0, 1.44)}  # angstrom: from the longest superlattice to the last line of use
 _MODEL_ERROR = 0.04  # relative error of calculated intensities that no parameter here removes, common practice
+_TERM_REACH = 8.0  # degree of the scan per polynomial term of the background
 _BACKGROUND_ERROR = 0.004
 
 
@@ -131,7 +132,7 @@ def prepare_scan(label: str, scan: Scan, instrument: Instrument) -> Prepared:
     weight = 1.0 / sigma
     width = _instrument_width(peaks, instrument.fwhm)
     view = View(make_grid(cut.two_theta, cut.radiation, instrument), cut.two_theta, cut.mount, fwhm=width)
-    smooth = background_terms(cut.two_theta)
+    smooth = background_terms(cut.two_theta, max(4, round(float(np.ptp(cut.two_theta)) / _TERM_REACH)))
     none = np.zeros((cut.two_theta.size, 0))
     return Prepared(label, cut, view, peaks, background, weight, smooth, none, orthonormal(smooth, weight))
 

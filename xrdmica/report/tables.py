@@ -127,6 +127,9 @@ def result_table(result: SampleResult, console: Console) -> None:
     _scans(result.scans, console)
     _weights(result, console)
     _alternatives(result.findings, console)
+    warnings = result.proportions.warnings
+    _list(console, "Warnings about the fit", [w.text for w in warnings if w.kind != "driver"])
+    _list(console, "What the weights rest on", [w.text for w in warnings if w.kind == "driver"])
     _indices(result, console)
     _chemistry(result, console)
     _unassigned(result.findings, console)
