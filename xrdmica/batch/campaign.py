@@ -11,7 +11,7 @@ from pathlib import Path
 from xrdmica.batch.repeats import REPEATS_HEADER, RepeatCollector, repeats_rows
 from xrdmica.batch.resume import read_head
 from xrdmica.batch.similar import group_similar
-from xrdmica.batch.store import csv_table
+from xrdmica.batch.store import csv_table, replace_bytes
 from xrdmica.errors import XrdmicaError
 from xrdmica.report.campaign import Campaign, CampaignRow
 from xrdmica.report.campaign_figures import FIGURE_FILES, campaign_figures
@@ -24,7 +24,6 @@ from xrdmica.report.files import (
     groups_rows,
     proportions_rows,
     summary_rows,
-    write_bytes,
 )
 from xrdmica.report.rows import Cell
 from xrdmica.results import SampleResult
@@ -190,14 +189,14 @@ def write_campaign(
                 write(rows_of(result))
             collector.add(result)
             rows.append(_row(result, f"{ended.stem}.html" if (out / f"{ended.stem}.html").exists() else ""))
-    campaign = Campaign(title or out.resolve().name, _with_groups(rows), collector.repeats())
+    campaign = Campaign(title, _with_groups(rows), collector.repeats())
     _write_wide(out / "proportions_wide.csv", campaign, bom)
     _write_some(out / "repeats.csv", REPEATS_HEADER, repeats_rows(campaign.repeats), bom)
     failures = [(ended.sample, ended.reason) for ended in samples if ended.reason]
     _write_some(out / "failures.csv", FAILURES_HEADER, failures_rows(failures), bom)
     drawn = campaign_figures(campaign) if figures else {}
     for name, (_, content) in drawn.items():
-        write_bytes(out / name, content)
+        replace_bytes(out / name, content)
     for name in FIGURE_FILES:
         if name not in drawn:
             (out / name).unlink(missing_ok=True)
