@@ -109,6 +109,20 @@ def test_nothing_finished(tmp_path: Path) -> None:
     assert json.loads((tmp_path / "run.json").read_text())["samples"][0]["status"] == "failed"
 
 
+def test_figures_that_fail_leave_the_tables(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    def fails(campaign: Campaign) -> None:
+        raise RuntimeError("no paper")
+
+    monkeypatch.setattr("xrdmica.batch.campaign.campaign_figures", fails)
+    monkeypatch.setitem(sys.modules, "xrdmica.report.page", None)
+    go([FakeEntry("S1")], tmp_path, figures=True, report=True)
+    assert (tmp_path / "run.json").exists()
+    reasons = {row["sample"]: row["reason"] for row in table(tmp_path / "failures.csv")}
+    assert "its page could not be written" in reasons["S1"]
+    assert "the overview could not be written" in reasons["(all samples)"]
+    assert [row["reason"] for row in table(tmp_path / "failures.csv")][1].endswith("could not be drawn: no paper")
+
+
 # ---------------------------------------------------------------- groups of similar samples
 
 
