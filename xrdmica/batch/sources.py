@@ -9,12 +9,14 @@ from pathlib import Path
 
 from xrdmica.batch.sheet import (
     _SCAN_SUFFIXES,
+    _TABLE_SUFFIXES,
     FoundSamples,
     SampleEntry,
     Skipped,
     _entries_by_name,
     _is_sheet,
     _natural,
+    _no_scan,
     _suffix,
     _tube,
     entries_from,
@@ -72,7 +74,7 @@ def gather(
     """
     given = [sources] if isinstance(sources, str | Path) else list(sources)
     parts: list[tuple[str, FoundSamples]] = []
-    loose: dict[Path, list[Path]] = {}
+    loose: dict[Path, dict[Path, Path]] = {}
     skipped: list[Skipped] = []
     for text in given:
         matched = [path for path in _expand(text) if not path.name.startswith((".", "~"))]
@@ -80,20 +82,26 @@ def gather(
         for path in matched:
             if path.is_dir() or _is_sheet(path) or not path.exists():
                 parts.append((str(path), entries_from(path, radiation=radiation, allow_outside=allow_outside)))
-            elif explicit or _suffix(path) in _SCAN_SUFFIXES:
-                group = loose.setdefault(path.parent, [])
-                if not any(path.samefile(other) for other in group):
-                    group.append(path)
+            elif not explicit and (reason := _other(path)) is not None:
+                skipped.append(Skipped(path, reason))
             else:
-                skipped.append(Skipped(path, "its name does not end like that of an export"))
+                group = loose.setdefault(path.parent, {})
+                group.setdefault(path.resolve(), path)
     for folder, files in loose.items():
-        parts.append((str(folder), FoundSamples(_entries_by_name(files, _tube(radiation)))))
+        parts.append((str(folder), FoundSamples(_entries_by_name(list(files.values()), _tube(radiation)))))
     _no_sample_twice(parts)
     return Gathered(
         tuple(entry for _, found in parts for entry in found),
         (*skipped, *(item for _, found in parts for item in found.skipped)),
         tuple(found.sheet for _, found in parts if found.sheet is not None),
     )
+
+
+def _other(path: Path) -> str | None:
+    """Why a file that a pattern matched is no export; None when it is one, also a damaged one."""
+    if _suffix(path) not in _SCAN_SUFFIXES:
+        return "its name does not end like that of an export"
+    return _no_scan(path) if _suffix(path) in _TABLE_SUFFIXES else None
 
 
 def _expand(text: str | Path) -> list[Path]:
