@@ -23,6 +23,7 @@ from finished_sample import build_result
 from xrdmica.batch.campaign import INDICES_HEADER, campaign_of, indices_rows, quality_flags
 from xrdmica.batch.repeats import RepeatCollector
 from xrdmica.batch.run import run_batch
+from xrdmica.batch.sheet import read_sheet
 from xrdmica.batch.similar import _points, _silhouette, group_similar
 from xrdmica.report.campaign import Campaign, CampaignRow
 from xrdmica.report.campaign_figures import CORNERS, campaign_figures, stacked_figure, ternary_figure
@@ -106,6 +107,20 @@ def test_nothing_finished(tmp_path: Path) -> None:
         "failures.csv", "groups.csv", "indices.csv", "proportions.csv", "proportions_wide.csv", "run.json", "summary.csv",
     }  # fmt: skip
     assert json.loads((tmp_path / "run.json").read_text())["samples"][0]["status"] == "failed"
+
+
+def test_figures_that_fail_leave_the_tables(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    def fails(campaign: Campaign) -> None:
+        raise RuntimeError("no paper")
+
+    monkeypatch.setattr("xrdmica.batch.campaign.campaign_figures", fails)
+    monkeypatch.setitem(sys.modules, "xrdmica.report.page", None)
+    go([FakeEntry("S1")], tmp_path, figures=True, report=True)
+    assert (tmp_path / "run.json").exists()
+    reasons = {row["sample"]: row["reason"] for row in table(tmp_path / "failures.csv")}
+    assert "its page could not be written" in reasons["S1"]
+    assert "the overview could not be written" in reasons["(all samples)"]
+    assert [row["reason"] for row in table(tmp_path / "failures.csv")][1].endswith("could not be drawn: no paper")
 
 
 # ---------------------------------------------------------------- groups of similar samples
@@ -214,6 +229,16 @@ def test_repeatability(tmp_path: Path) -> None:
         assert float(row["typical_standard_error"]) == 1.5
     go(rows[2:3], tmp_path)
     assert not (tmp_path / "repeats.csv").exists()
+
+
+def test_marks_come_from_the_sheet(tmp_path: Path) -> None:
+    for name in "abc":
+        (tmp_path / f"{name}.xy").write_text("".join(f"{3 + 0.1 * k:.1f} {100 + k % 7}\n" for k in range(200)))
+    sheet = tmp_path / "sheet.csv"
+    sheet.write_text("sample,file,repeat_of,standard_sample\na,a.xy,,\nb,b.xy,a,\nc,c.xy,,mix 7\n")
+    details = [dict(entry.details) for entry in read_sheet(sheet)]
+    assert details == [{}, {"repeat_of": "a"}, {"standard_sample": "mix 7"}]
+    assert RepeatCollector.originals_of(details) == {"a"}
 
 
 def test_a_phase_found_once_has_no_repeatability() -> None:

@@ -113,6 +113,18 @@ def test_arrays_travel_not_paths(tmp_path: Path, cluster: Any) -> None:
     ]  # fmt: skip
 
 
+def test_the_instrument_travels_as_values(tmp_path: Path, cluster: Any) -> None:
+    """Workers elsewhere cannot read the file of the instrument either."""
+    from xrdmica.diffraction.optics import Instrument
+
+    path = tmp_path / "ours.toml"
+    path.write_text('name = "ours"\n')
+    settings = QuickSettings(instrument=str(path))
+    told = go(tmp_path / "out", [FakeEntry("S1")], scheduler=cluster.scheduler_address, settings=settings,
+              analyse=fake_batch.name_of_instrument)  # fmt: skip
+    assert told[0].reason == f"TypeError: {Instrument.__name__} ours"
+
+
 def test_no_scheduler(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
     pytest.importorskip("distributed", reason="needs xrdmica[cluster]")
     monkeypatch.setattr("xrdmica.batch.dask_executor._REACH", 1.0)

@@ -113,6 +113,22 @@ def test_failed_samples_are_tried_again(tmp_path: Path) -> None:
     assert (tmp_path / "failures.csv").read_text().splitlines()[1] == "bad,ZeroDivisionError: a mistake in the program"
 
 
+def test_a_file_that_changes_meanwhile(tmp_path: Path, entries: list[FakeEntry]) -> None:
+    """Nobody knows which of the two was read: no result, and the next run makes it."""
+    def slow(sample, settings):
+        if sample.name == "S1" and not (tmp_path / "changed").exists():
+            (tmp_path / "changed").write_text("")
+            (tmp_path / "in" / "S1.xy").write_text("measured again")
+        return quick(sample, settings)
+
+    told = go(entries, tmp_path / "out", analyse=slow)
+    assert [p.reason for p in told if p.reason] == [
+        "its files changed while it was analysed: repeat the command when they are complete"
+    ]
+    assert kept(go(entries, tmp_path / "out", analyse=slow)) == {"S0", "S2", "S3"}
+    assert (tmp_path / "out" / "S1.json").exists()
+
+
 def test_a_missing_figure_is_drawn_from_the_result(tmp_path: Path, entries: list[FakeEntry]) -> None:
     go(entries[:2], tmp_path / "at once", figures=True)
     out = tmp_path / "later"

@@ -49,6 +49,9 @@ def test_what_a_pattern_also_matches_is_told(place: Path) -> None:
     found = gather(f"{place}/a/*")
     assert [item.file.name for item in found.skipped] == ["README.md"]
     assert len(found) == 3
+    (place / "a" / "summary.csv").write_text("sample,swelling\nS1,yes\n")
+    found = gather(f"{place}/a/*.*")
+    assert [item.file.name for item in found.skipped] == ["README.md", "summary.csv"]
 
 
 def test_files_one_by_one_make_samples(place: Path) -> None:

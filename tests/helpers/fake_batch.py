@@ -8,6 +8,7 @@ import time
 from collections.abc import Sequence
 from dataclasses import dataclass, field, replace
 from pathlib import Path
+from typing import Any
 
 import numpy as np
 from finished_sample import build_result
@@ -82,6 +83,11 @@ def analyse(sample: Sample, settings: FakeSettings) -> SampleResult:
             pass
     result = build_result(sample.name, curves=settings.curves, points=60)
     return result.model_copy(update={"curves": result.curves[:1]})
+
+
+def name_of_instrument(sample: Sample, settings: Any) -> SampleResult:
+    """Fails, telling what it was given."""
+    raise TypeError(f"{type(settings.instrument).__name__} {settings.instrument.name}")
 
 
 def identify(sample: Sample, phases: object = None, instrument: object = None) -> Findings:

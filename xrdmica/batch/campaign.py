@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import dataclasses
+import sys
 from collections.abc import Callable, Iterable, Mapping, Sequence
 from contextlib import ExitStack
 from dataclasses import dataclass
@@ -11,7 +12,7 @@ from pathlib import Path
 from xrdmica.batch.repeats import REPEATS_HEADER, RepeatCollector, repeats_rows
 from xrdmica.batch.resume import read_head
 from xrdmica.batch.similar import group_similar
-from xrdmica.batch.store import csv_table
+from xrdmica.batch.store import csv_table, replace_bytes
 from xrdmica.errors import XrdmicaError
 from xrdmica.report.campaign import Campaign, CampaignRow
 from xrdmica.report.campaign_figures import FIGURE_FILES, campaign_figures
@@ -24,7 +25,6 @@ from xrdmica.report.files import (
     groups_rows,
     proportions_rows,
     summary_rows,
-    write_bytes,
 )
 from xrdmica.report.rows import Cell
 from xrdmica.results import SampleResult
@@ -35,6 +35,7 @@ INDICES_HEADER = ("sample", "index", "name", "value", "standard_error", "unit", 
 _WIDE = (
     "sample", "swelling", "expandable_percent", "low95", "high95", "reduced_chi_square", "similar_group", "flags",
 )  # fmt: skip
+_ALL = "(all samples)"
 _POOR_FIT = 3.0  # reduced chi-square, with the model error in the weights: beyond it the scans hold something unexplained
 
 
@@ -95,7 +96,7 @@ def quality_flags(result: SampleResult) -> tuple[str, ...]:
     if result.chemistry is not None and result.chemistry.agrees is False:
         flags.append("chemistry disagrees")
     flags += [warning.kind for warning in result.proportions.warnings]
-    return tuple(dict.fromkeys(flags))
+    return tuple(sys.intern(flag) for flag in dict.fromkeys(flags))
 
 
 def campaign_of(
@@ -135,8 +136,8 @@ def _row(result: SampleResult, page: str) -> CampaignRow:
     swelling = result.swelling
     return CampaignRow(
         result.sample, page, swelling.verdict, swelling.expandable_percent, swelling.low95, swelling.high95,
-        {p.name: p.weight_percent for p in result.proportions.phases if p.weight_percent is not None},
-        {g.group: g.weight_percent for g in result.proportions.groups if g.weight_percent is not None},
+        {sys.intern(p.name): p.weight_percent for p in result.proportions.phases if p.weight_percent is not None},
+        {sys.intern(g.group): g.weight_percent for g in result.proportions.groups if g.weight_percent is not None},
         result.proportions.quality.reduced_chi_square, quality_flags(result),
     )  # fmt: skip
 
@@ -190,25 +191,41 @@ def write_campaign(
                 write(rows_of(result))
             collector.add(result)
             rows.append(_row(result, f"{ended.stem}.html" if (out / f"{ended.stem}.html").exists() else ""))
-    campaign = Campaign(title or out.resolve().name, _with_groups(rows), collector.repeats())
+    campaign = Campaign(title, _with_groups(rows), collector.repeats())
     _write_wide(out / "proportions_wide.csv", campaign, bom)
     _write_some(out / "repeats.csv", REPEATS_HEADER, repeats_rows(campaign.repeats), bom)
+    campaign, wanting = _drawn(out, campaign) if figures else (campaign, [])
+    for name in set(FIGURE_FILES) - set(campaign.figures.values()):
+        (out / name).unlink(missing_ok=True)
+    wanting += _overview(out, campaign) if report else []
+    if not report:
+        (out / "index.html").unlink(missing_ok=True)
     failures = [(ended.sample, ended.reason) for ended in samples if ended.reason]
-    _write_some(out / "failures.csv", FAILURES_HEADER, failures_rows(failures), bom)
-    drawn = campaign_figures(campaign) if figures else {}
+    _write_some(out / "failures.csv", FAILURES_HEADER, failures_rows([*failures, *wanting]), bom)
+    return campaign
+
+
+def _drawn(out: Path, campaign: Campaign) -> tuple[Campaign, list[tuple[str, str]]]:
+    """The campaign with its figures written; a figure that fails does not take the tables with it."""
+    try:
+        drawn = campaign_figures(campaign)
+    except Exception as error:
+        return campaign, [(_ALL, f"all samples are complete, but the figures over them could not be drawn: {error}")]
     for name, (_, content) in drawn.items():
-        write_bytes(out / name, content)
-    for name in FIGURE_FILES:
-        if name not in drawn:
-            (out / name).unlink(missing_ok=True)
-    campaign = dataclasses.replace(campaign, figures={caption: name for name, (caption, _) in drawn.items()})
-    if report:
+        replace_bytes(out / name, content)
+    return dataclasses.replace(campaign, figures={caption: name for name, (caption, _) in drawn.items()}), []
+
+
+def _overview(out: Path, campaign: Campaign) -> list[tuple[str, str]]:
+    try:
         from xrdmica.report.page import write_overview  # type: ignore[import-not-found, unused-ignore]
 
         write_overview(campaign, out)
-    else:
-        (out / "index.html").unlink(missing_ok=True)
-    return campaign
+    except XrdmicaError:
+        raise
+    except Exception as error:
+        return [(_ALL, f"all samples are complete, but the overview could not be written: {error}")]
+    return []
 
 
 def _read(out: Path, ended: Ended) -> SampleResult:

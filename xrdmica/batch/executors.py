@@ -213,8 +213,9 @@ class _Worker:
         self._items: queue.SimpleQueue[bytes | None] = queue.SimpleQueue()
         environment = {**os.environ, **dict.fromkeys(THREAD_VARIABLES, "1")}
         self.process = subprocess.Popen(
-            [sys.executable, "-c", _START, json.dumps(sys.path)], stdin=subprocess.PIPE, stdout=subprocess.PIPE, env=environment
-        )
+            [sys.executable, "-c", _START, json.dumps([str(folder) for folder in sys.path])],
+            stdin=subprocess.PIPE, stdout=subprocess.PIPE, env=environment,
+        )  # fmt: skip
         threading.Thread(target=self._talk, daemon=True).start()
 
     def give(self, data: bytes) -> None:

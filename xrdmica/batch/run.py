@@ -13,10 +13,10 @@ from xrdmica.batch.executors import Executor, executor_for
 from xrdmica.batch.lock import locked, refuse_if_locked
 from xrdmica.batch.record import write_record
 from xrdmica.batch.resume import FINGERPRINT, Circumstances, circumstances, digests_of, fingerprint_of, read_head
-from xrdmica.batch.store import commit, sweep, withdraw
+from xrdmica.batch.store import commit, replace_bytes, sweep, withdraw
 from xrdmica.batch.task import Analyse, Job, Outcome, work
 from xrdmica.errors import XrdmicaError
-from xrdmica.report.files import plan_stems, read_result, write_bytes, write_text
+from xrdmica.report.files import plan_stems, read_result, write_text
 from xrdmica.results import SampleResult
 
 if TYPE_CHECKING:
@@ -282,7 +282,7 @@ def _run(plan: _Plan, shared: Circumstances) -> Iterator[SampleResult]:
         write_campaign(
             plan.out, [Ended(t.entry.name, t.stem if t.finished else None, t.reason or "") for t in plan.tasks],
             details=(getattr(task.entry, "details", {}) for task in plan.tasks), figures=plan.figures, report=plan.report,
-            bom=plan.bom,
+            bom=plan.bom, title=", ".join(plan.origin["sheets"]) or "Samples",
         )  # fmt: skip
         write_record(plan.out, plan.tasks, shared, plan.origin)
 
@@ -326,6 +326,9 @@ def _jobs(plan: _Plan, waiting: Sequence[_Task], script: Sequence[bool]) -> Iter
 
 def _settle(plan: _Plan, task: _Task, outcome: Outcome | Exception, script: list[bool]) -> None:
     """Write what a worker sent back and note what became of the sample."""
+    if not isinstance(outcome, Exception) and digests_of(input_files(task.entry)) != task.digests:
+        # what went into the result may be neither the old nor the new file
+        outcome = XrdmicaError("its files changed while it was analysed", fix="repeat the command when they are complete")
     if isinstance(outcome, Exception):
         task.reason = " ".join(str(outcome).split())
         withdraw(plan.out, task.stem, task.entry.name)
@@ -336,7 +339,7 @@ def _settle(plan: _Plan, task: _Task, outcome: Outcome | Exception, script: list
             fix="install the same version everywhere",
         )
     for name, content in outcome.shared.items():
-        write_bytes(plan.out / name, content)
+        replace_bytes(plan.out / name, content)
         script[0] = False
     # with a new JSON all others are new too; without one, what is there belongs to it
     keep = () if ".json" in outcome.files else plan.suffixes()

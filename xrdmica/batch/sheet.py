@@ -17,13 +17,25 @@ from xrdmica.scans.read.decode import text_lines
 from xrdmica.scans.treatment import Treatment
 
 __all__ = [
-    "SCAN_SUFFIXES", "FoundSamples", "SampleEntry", "SheetRow", "Skipped", "entries_by_name", "entries_from", "is_sheet",
-    "natural_order", "read_sheet", "samples_in_folder", "suffix_of",
+    "OPEN_SUFFIXES",
+    "SCAN_SUFFIXES",
+    "FoundSamples",
+    "SampleEntry",
+    "SheetRow",
+    "Skipped",
+    "entries_by_name",
+    "entries_from",
+    "is_sheet",
+    "natural_order",
+    "no_scan",
+    "read_sheet",
+    "samples_in_folder",
+    "suffix_of",
 ]  # fmt: skip
 
 # may be something else than a scan: looked into
-_OPEN_SUFFIXES = (".csv", ".tsv", ".txt", ".dat", ".cif", ".prn", ".xml", ".nxs", ".h5", ".hdf5")
-SCAN_SUFFIXES = (".xy", ".xye", ".asc", *_OPEN_SUFFIXES)
+OPEN_SUFFIXES = (".csv", ".tsv", ".txt", ".dat", ".cif", ".prn", ".xml", ".nxs", ".h5", ".hdf5")
+SCAN_SUFFIXES = (".xy", ".xye", ".asc", *OPEN_SUFFIXES)
 _SHEET_SUFFIXES = (".csv", ".tsv", ".txt")
 
 
@@ -160,7 +172,7 @@ def samples_in_folder(
     for path in files:
         if suffix_of(path) not in SCAN_SUFFIXES or re.match(r"(?i)(readme|license|notes?\b)", path.name):
             continue
-        reason = _no_scan(path) if suffix_of(path) in _OPEN_SUFFIXES else None
+        reason = no_scan(path) if suffix_of(path) in OPEN_SUFFIXES else None
         if reason is None:
             scans.append(path)
         else:
@@ -172,7 +184,7 @@ def samples_in_folder(
     return FoundSamples(entries_by_name(scans, tube), tuple(skipped))
 
 
-def _no_scan(path: Path) -> str | None:
+def no_scan(path: Path) -> str | None:
     """Why a file is something else than a scan; None for scans, also for damaged ones, which fail in their sample."""
     try:
         read_scan(path, radiation="Cu")

@@ -8,6 +8,7 @@ from dataclasses import dataclass
 from pathlib import Path
 
 from xrdmica.batch.sheet import (
+    OPEN_SUFFIXES,
     SCAN_SUFFIXES,
     FoundSamples,
     SampleEntry,
@@ -16,6 +17,7 @@ from xrdmica.batch.sheet import (
     entries_from,
     is_sheet,
     natural_order,
+    no_scan,
     suffix_of,
 )
 from xrdmica.batch.sheet_table import tube_of
@@ -72,7 +74,7 @@ def gather(
     """
     given = [sources] if isinstance(sources, str | Path) else list(sources)
     parts: list[tuple[str, FoundSamples]] = []
-    loose: dict[Path, list[Path]] = {}
+    loose: dict[Path, dict[Path, Path]] = {}
     skipped: list[Skipped] = []
     for text in given:
         matched = [path for path in _expand(text) if not path.name.startswith((".", "~"))]
@@ -80,20 +82,26 @@ def gather(
         for path in matched:
             if path.is_dir() or is_sheet(path) or not path.exists():
                 parts.append((str(path), entries_from(path, radiation=radiation, allow_outside=allow_outside)))
-            elif explicit or suffix_of(path) in SCAN_SUFFIXES:
-                group = loose.setdefault(path.parent, [])
-                if not any(path.samefile(other) for other in group):
-                    group.append(path)
+            elif not explicit and (reason := _other(path)) is not None:
+                skipped.append(Skipped(path, reason))
             else:
-                skipped.append(Skipped(path, "its name does not end like that of an export"))
+                group = loose.setdefault(path.parent, {})
+                group.setdefault(path.resolve(), path)
     for folder, files in loose.items():
-        parts.append((str(folder), FoundSamples(entries_by_name(files, tube_of(radiation)))))
+        parts.append((str(folder), FoundSamples(entries_by_name(list(files.values()), tube_of(radiation)))))
     _no_sample_twice(parts)
     return Gathered(
         tuple(entry for _, found in parts for entry in found),
         (*skipped, *(item for _, found in parts for item in found.skipped)),
         tuple(found.sheet for _, found in parts if found.sheet is not None),
     )
+
+
+def _other(path: Path) -> str | None:
+    """Why a file that a pattern matched is no export; None when it is one, also a damaged one."""
+    if suffix_of(path) not in SCAN_SUFFIXES:
+        return "its name does not end like that of an export"
+    return no_scan(path) if suffix_of(path) in OPEN_SUFFIXES else None
 
 
 def _expand(text: str | Path) -> list[Path]:

@@ -14,7 +14,7 @@ from xrdmica.errors import XrdmicaError
 from xrdmica.report.files import sample_of_file, table_cell
 from xrdmica.report.rows import Cell
 
-__all__ = ["SUFFIXES", "commit", "csv_table", "replace_text", "sweep", "withdraw"]
+__all__ = ["SUFFIXES", "commit", "csv_table", "replace_bytes", "replace_text", "sweep", "withdraw"]
 
 SUFFIXES = (".png", ".html", ".json")  # what a sample may have, the one that makes the others count at the end
 
@@ -75,6 +75,27 @@ def sweep(folder: Path) -> None:
     for path in folder.glob(".*.part"):
         if path.is_file():
             path.unlink(missing_ok=True)
+
+
+def replace_bytes(path: Path, content: bytes) -> None:
+    """Write a file whole or not at all, forced to the disk.
+
+    Raises
+    ------
+    XrdmicaError
+        If it cannot be written.
+    """
+    draft: Path | None = None
+    try:
+        path.parent.mkdir(parents=True, exist_ok=True)
+        draft = _draft(path.parent, path.name, content)
+        draft.replace(path)
+        _settle(path.parent)
+    except OSError as error:
+        raise _cannot(path, error) from error
+    finally:
+        if draft is not None:
+            draft.unlink(missing_ok=True)
 
 
 @contextmanager
