@@ -15,10 +15,12 @@ if TYPE_CHECKING:
     from xrdmica.batch.analyse import Settings, analyse_sample
     from xrdmica.batch.run import run_batch
     from xrdmica.batch.samples import read_sample
+    from xrdmica.chemistry.analysis import formula_from_oxides
     from xrdmica.chemistry.formula import SiteFormula
     from xrdmica.crystals.layer import Layer, build_layer
     from xrdmica.crystals.library import Phase, all_phases, load_phase
     from xrdmica.crystals.polytype import library_structure
+    from xrdmica.crystals.spacing import predicted_b, predicted_spacing
     from xrdmica.diffraction.basal import basal_pattern
     from xrdmica.diffraction.optics import Instrument, load_instrument
     from xrdmica.diffraction.powder import powder_pattern
@@ -49,11 +51,14 @@ _PLACES = {
     "build_layer": "xrdmica.crystals.layer",
     "estimate": "xrdmica.estimate.proportions",
     "find_peaks": "xrdmica.scans.peaks",
+    "formula_from_oxides": "xrdmica.chemistry.analysis",
     "identify": "xrdmica.identify.decide",
     "library_structure": "xrdmica.crystals.polytype",
     "load_instrument": "xrdmica.diffraction.optics",
     "load_phase": "xrdmica.crystals.library",
     "powder_pattern": "xrdmica.diffraction.powder",
+    "predicted_b": "xrdmica.crystals.spacing",
+    "predicted_spacing": "xrdmica.crystals.spacing",
     "read_sample": "xrdmica.batch.samples",
     "read_scan": "xrdmica.scans.read",
     "run_batch": "xrdmica.batch.run",
@@ -62,8 +67,9 @@ _PLACES = {
 
 __all__ = [
     "Instrument", "Layer", "Phase", "Radiation", "Sample", "Scan", "Settings", "SiteFormula", "Treatment", "XrdmicaError",
-    "__version__", "all_phases", "analyse_sample", "basal_pattern", "build_layer", "estimate", "find_peaks", "identify",
-    "library_structure", "load_instrument", "load_phase", "powder_pattern", "read_sample", "read_scan", "run_batch",
+    "__version__", "all_phases", "analyse_sample", "basal_pattern", "build_layer", "estimate", "find_peaks",
+    "formula_from_oxides", "identify", "library_structure", "load_instrument", "load_phase", "powder_pattern", "predicted_b",
+    "predicted_spacing", "read_sample", "read_scan", "run_batch",
     "screen_swelling",
 ]  # fmt: skip
 

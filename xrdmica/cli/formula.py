@@ -7,7 +7,15 @@ from typing import TYPE_CHECKING, Any, Literal
 
 import click
 
-from xrdmica.cli.oxide_analyses import analyses_csv, analysis_record, parse_interlayer_magnesium, read_all, show_analysis
+from xrdmica.cli.oxide_analyses import (
+    analyses_csv,
+    analysis_record,
+    parse_interlayer_magnesium,
+    predicted_record,
+    read_all,
+    show_analysis,
+    show_predicted,
+)
 
 if TYPE_CHECKING:
     from rich.console import Console
@@ -43,6 +51,7 @@ def _record(given: str, formula: SiteFormula) -> dict[str, Any]:
         "imbalance": _plain(formula.imbalance),
         "molar_mass": _plain(formula.molar_mass),
         "water": formula.water,
+        **predicted_record(formula),
         "oxides": {name: _plain(value) for name, value in formula.oxides().items()},
         "notes": list(formula.notes),
     }
@@ -88,6 +97,7 @@ def _show(console: Console, formula: SiteFormula) -> None:
     oxides.add_section()
     oxides.add_row("sum", f"{sum(percent.values()):.2f}")
     console.print(oxides)
+    show_predicted(console, formula)
     for reason in named.reasons:
         console.print(f"because: {escape(reason)}", highlight=False)
     for note in formula.notes:

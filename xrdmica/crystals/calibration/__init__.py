@@ -1,0 +1,1 @@
+"""Published cells and the fit of the spacing model to them."""
