@@ -24,7 +24,7 @@ def test_coefficients_are_those_of_the_cells(quantity: str) -> None:
     kept, fresh = json.loads(path.read_text(encoding="utf-8"))[quantity], fit(CELLS, quantity)
     assert kept["terms"] == fresh["terms"]
     assert kept["cells"] == fresh["cells"] == len(CELLS)
-    for key in ("coefficients", "covariance", "residual_sigma", "leave_one_out_rms"):
+    for key in ("coefficients", "covariance", "residual_sigma", "leave_one_out_rms", "leave_one_mineral_out_rms"):
         np.testing.assert_allclose(kept[key], fresh[key], rtol=1e-4, atol=3e-6)
 
 
@@ -35,6 +35,14 @@ def test_error_of_cells_left_out(quantity: str, aim: float) -> None:
     assert {cell.formula.group for cell in CELLS} >= {"true mica", "brittle mica", "talc group"}
     assert sum(cell.formula.anions.get("F-", 0.0) > 1 for cell in CELLS) >= 4
     assert np.sqrt(np.mean(errors**2)) <= aim
+
+
+@pytest.mark.parametrize("quantity", sorted(TERMS))
+def test_error_of_minerals_left_out(quantity: str) -> None:
+    """Harder: no cell of the same mineral takes part. b then misses 0.03 (0.033): paragonite and margarite carry the term of
+    the small interlayer cations between them."""
+    errors = leave_one_out(CELLS, quantity, whole_mineral=True)
+    assert np.sqrt(np.mean(errors**2)) <= 0.04
 
 
 @pytest.mark.parametrize("quantity", sorted(TERMS))
