@@ -30,7 +30,10 @@ def test_coefficients_are_those_of_the_cells(quantity: str) -> None:
 
 @pytest.mark.parametrize(("quantity", "aim"), [("d001", 0.04), ("b", 0.03)])
 def test_error_of_cells_left_out(quantity: str, aim: float) -> None:
-    """Rms over micas, brittle micas and the talc group [angstrom]; fluorine micas are among them."""
+    """Rms over micas, brittle micas and the talc group [angstrom]; fluorine micas are among them.
+
+    The terms were themselves chosen by this error, so it is a little too favourable.
+    """
     errors = leave_one_out(CELLS, quantity)
     assert {cell.formula.group for cell in CELLS} >= {"true mica", "brittle mica", "talc group"}
     assert sum(cell.formula.anions.get("F-", 0.0) > 1 for cell in CELLS) >= 4
