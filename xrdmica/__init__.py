@@ -20,7 +20,7 @@ if TYPE_CHECKING:
     from xrdmica.crystals.layer import Layer, build_layer
     from xrdmica.crystals.library import Phase, all_phases, load_phase
     from xrdmica.crystals.polytype import library_structure
-    from xrdmica.crystals.spacing import predict_spacing
+    from xrdmica.crystals.spacing import predict_spacing, predicted_b, predicted_spacing
     from xrdmica.diffraction.basal import basal_pattern
     from xrdmica.diffraction.optics import Instrument, load_instrument
     from xrdmica.diffraction.powder import powder_pattern
@@ -59,6 +59,8 @@ _PLACES = {
     "load_phase": "xrdmica.crystals.library",
     "powder_pattern": "xrdmica.diffraction.powder",
     "predict_spacing": "xrdmica.crystals.spacing",
+    "predicted_b": "xrdmica.crystals.spacing",
+    "predicted_spacing": "xrdmica.crystals.spacing",
     "read_sample": "xrdmica.batch.samples",
     "read_scan": "xrdmica.scans.read",
     "run_batch": "xrdmica.batch.run",
@@ -69,8 +71,8 @@ __all__ = [
     "Instrument", "Layer", "Phase", "Radiation", "Sample", "Scan", "Settings", "SiteFormula", "Treatment",
     "XrdmicaError", "__version__", "all_phases", "analyse_sample", "basal_pattern", "build_layer",
     "build_structure", "estimate", "find_peaks", "formula_from_oxides", "identify", "library_structure",
-    "load_instrument", "load_phase", "powder_pattern", "predict_spacing", "read_sample", "read_scan", "run_batch",
-    "screen_swelling",
+    "load_instrument", "load_phase", "powder_pattern", "predict_spacing", "predicted_b", "predicted_spacing",
+    "read_sample", "read_scan", "run_batch", "screen_swelling",
 ]  # fmt: skip
 
 

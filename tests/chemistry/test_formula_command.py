@@ -49,3 +49,18 @@ def test_a_bad_formula_is_named_and_nothing_is_written(tmp_path: Path) -> None:
 
 def test_no_formula_is_wrong_use() -> None:
     assert CliRunner().invoke(command, []).exit_code == 2
+
+
+def test_predicted_spacing_is_printed_and_written(tmp_path: Path) -> None:
+    """Muscovite: d(001) 9.98, d(060) 1.499-1.504 (handbooks, from memory); kaolinite has no spacing from this model."""
+    target = tmp_path / "f.json"
+    result = CliRunner().invoke(command, ["KAl2(AlSi3)O10(OH)2", "Al2Si2O5(OH)4", "--json", str(target)])
+    assert result.exit_code == 0
+    assert "predicted d(001)" in result.stdout
+    assert "no predicted spacing" in result.stdout
+    mica, clay = json.loads(target.read_text(encoding="utf-8"))["formulas"]
+    assert mica["predicted"]["d001"] == pytest.approx(9.98, abs=0.06)
+    assert mica["predicted"]["d060"] == pytest.approx(1.5015, abs=0.006)
+    assert 0 < mica["predicted"]["d060_sigma"] < 0.01
+    assert clay["predicted"] is None
+    assert "2:1 layers" in clay["not_predicted"]

@@ -104,3 +104,21 @@ def test_a_table_without_a_usable_row_is_wrong_use(tmp_path: Path) -> None:
     assert "sum to 160.0 %" in result.stderr
     both = CliRunner().invoke(main, ["formula", "KAl3Si3O10(OH)2", "--oxides", str(path)])
     assert both.exit_code == 2
+
+
+@pytest.mark.parametrize(
+    "text",
+    [
+        "sample,SiO2,sigma SiO2,Al2O3,1s Al2O3,K2O,σ K2O\nm1,45.2,0.4,38.4,0.3,11.8,0.1\n",
+        "sample,SiO2,2 sigma SiO2,Al2O3,2s Al2O3,K2O,2 sigma of K2O\nm1,45.2,0.8,38.4,0.6,11.8,0.2\n",
+        "oxide,m1,sigma m1\nSiO2,45.2,0.4\nAl2O3,38.4,0.3\nK2O,11.8,0.1\n",
+    ],
+)
+def test_sigma_in_front_of_a_name(tmp_path: Path, text: str) -> None:
+    path = tmp_path / "t.csv"
+    path.write_text(text, encoding="utf-8")
+    analyses, problems = read_oxide_table(path)
+    assert not problems
+    assert [a.name for a in analyses] == ["m1"]
+    assert dict(analyses[0].percent) == {"SiO2": 45.2, "Al2O3": 38.4, "K2O": 11.8}
+    assert dict(analyses[0].sigma) == pytest.approx({"SiO2": 0.4, "Al2O3": 0.3, "K2O": 0.1})

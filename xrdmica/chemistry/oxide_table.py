@@ -37,6 +37,10 @@ _NAME = re.compile(r"(sample|samples|name|id|analysis|label|spot|point|oxide|oxi
 _SIGMA = re.compile(
     r"(?:^|[\s_(])(?:(2)\s*)?(?:1\s*)?(sigma|σ|s\.?d\.?|std\.?|stdev|error|err|uncertainty|esd|1s|2s)\)?$|^(?:±|\+/-)\s*|\s*(?:±|\+/-)$"
 )
+# the same in front: "sigma SiO2", "2 sigma SiO2"
+_SIGMA_FIRST = re.compile(
+    r"((?:[12]\s*)?(?:sigma|σ|s\.?d\.?|std\.?|stdev|error|err|uncertainty|esd)|1s|2s)[\s_]+(?:of\s+)?(\S.*)", re.IGNORECASE
+)
 _UNIT = re.compile(r"[\s_(\[,]*(wt\.?\s*%|wt\.?|weight\s*%|mass\s*%|%|ppm|mg/kg|µg/g|ug/g)\s*[)\]]?\s*$")
 _PPM = ("ppm", "mg/kg", "µg/g", "ug/g")
 _ABSENT = {
@@ -60,6 +64,12 @@ class Quantity:
     divisor: float = 1.0
 
 
+def _sigma_last(text: str) -> str:
+    """``sigma SiO2`` as ``SiO2 sigma``."""
+    found = _SIGMA_FIRST.fullmatch(text.strip())
+    return f"{found.group(2)} {found.group(1)}" if found else text
+
+
 def _element_factor(symbol: str) -> tuple[str, float] | None:
     """Weight of the usual oxide per weight of the element, for trace elements in ppm."""
     try:
@@ -75,7 +85,7 @@ def _element_factor(symbol: str) -> tuple[str, float] | None:
 
 def read_quantity(heading: str) -> Quantity | None:
     """What a heading means, or None when it names no oxide: ``SiO2``, ``Al2O3 (wt%)``, ``Rb2O ppm``, ``FeO*``, ``SiO2 1s``."""
-    text = heading.strip().translate(_SUBSCRIPT).strip("\"'")
+    text = _sigma_last(heading.strip().translate(_SUBSCRIPT).strip("\"'"))
     sigma, divisor = False, 1.0
     unit = ""
     for _ in range(2):
@@ -275,8 +285,9 @@ def _with_sigma_columns(analyses: Sequence[OxideAnalysis]) -> list[OxideAnalysis
     """Where analyses stand in columns, a column headed ``A1 sigma`` or ``sigma`` holds the errors of the one before it."""
     out: list[OxideAnalysis] = []
     for analysis in analyses:
-        found = _SIGMA.search(f" {analysis.name.lower()}")
-        stem = analysis.name[: max(found.start() - 1, 0)].strip(" _(") if found else ""
+        named = _sigma_last(analysis.name)
+        found = _SIGMA.search(f" {named.lower()}")
+        stem = named[: max(found.start() - 1, 0)].strip(" _(") if found else ""
         if found and out and stem in ("", out[-1].name):
             half = 2.0 if found.group(1) == "2" or found.group(2) == "2s" else 1.0
             last = out[-1]

@@ -7,7 +7,15 @@ from typing import TYPE_CHECKING, Any, Literal
 
 import click
 
-from xrdmica.cli.oxide_analyses import analyses_csv, analysis_record, parse_interlayer_magnesium, read_all, show_analysis
+from xrdmica.cli.oxide_analyses import (
+    analyses_csv,
+    analysis_record,
+    parse_interlayer_magnesium,
+    predicted_record,
+    read_all,
+    show_analysis,
+    show_predicted,
+)
 
 if TYPE_CHECKING:
     from rich.console import Console
@@ -43,26 +51,10 @@ def _record(given: str, formula: SiteFormula) -> dict[str, Any]:
         "imbalance": _plain(formula.imbalance),
         "molar_mass": _plain(formula.molar_mass),
         "water": formula.water,
+        **predicted_record(formula),
         "oxides": {name: _plain(value) for name, value in formula.oxides().items()},
-        "predicted": _predicted(formula),
         "notes": list(formula.notes),
     }
-
-
-def _predicted(formula: SiteFormula) -> dict[str, Any] | None:
-    """b, d(001) and d(060) from the composition with standard errors; None where no model applies."""
-    from xrdmica.crystals.spacing import predict_spacing
-    from xrdmica.errors import StructureError
-
-    try:
-        found = predict_spacing(formula)
-    except StructureError:
-        return None
-    return {
-        "d001": round(found.d001, 4), "d001_error": round(found.d001_sigma, 4), "b": round(found.b, 4),
-        "b_error": round(found.b_sigma, 4), "d060": round(found.d060, 4), "d060_error": round(found.b_sigma / 6, 4),
-        "notes": list(found.notes),
-    }  # fmt: skip
 
 
 def _plain(value: float) -> float:
@@ -96,10 +88,6 @@ def _show(console: Console, formula: SiteFormula) -> None:
     facts.add_row("molar mass, dry (g/mol)", f"{formula.molar_mass:.2f}")
     if formula.water:
         facts.add_row("interlayer water, not in the mass", f"{formula.water:g} H2O")
-    predicted = _predicted(formula)
-    if predicted is not None:
-        for key, words in (("d001", "d(001)"), ("b", "b"), ("d060", "d(060)")):
-            facts.add_row(f"predicted {words} (Å)", f"{predicted[key]:.3f} ± {predicted[key + '_error']:.3f}")
     console.print(facts)
     oxides = Table("oxide", title="Composition, dry", title_justify="left")
     oxides.add_column("wt %", justify="right")
@@ -109,9 +97,10 @@ def _show(console: Console, formula: SiteFormula) -> None:
     oxides.add_section()
     oxides.add_row("sum", f"{sum(percent.values()):.2f}")
     console.print(oxides)
+    show_predicted(console, formula)
     for reason in named.reasons:
         console.print(f"because: {escape(reason)}", highlight=False)
-    for note in (*formula.notes, *(predicted["notes"] if predicted else ())):
+    for note in formula.notes:
         console.print(f"note: {escape(note)}", highlight=False)
 
 

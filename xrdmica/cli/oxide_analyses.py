@@ -14,9 +14,13 @@ if TYPE_CHECKING:
     from rich.console import Console
 
     from xrdmica.chemistry.analysis import AnalysisFormula, Basis, Iron
+    from xrdmica.chemistry.formula import SiteFormula
     from xrdmica.chemistry.oxide_table import TableError
 
-__all__ = ["analyses_csv", "analysis_record", "parse_interlayer_magnesium", "read_all", "show_analysis"]
+__all__ = [
+    "analyses_csv", "analysis_record", "parse_interlayer_magnesium", "predicted_record", "read_all", "show_analysis",
+    "show_predicted",
+]  # fmt: skip
 
 _SITES = ("interlayer", "octahedral", "tetrahedral", "anions")
 
@@ -72,6 +76,36 @@ def read_all(
     return found, [str(error) for error in failed]
 
 
+def predicted_record(formula: SiteFormula) -> dict[str, Any]:
+    """Predicted b, d(001) and d(060) with standard errors [angstrom], or why there are none."""
+    from xrdmica.crystals.spacing import predict_spacing
+    from xrdmica.errors import StructureError
+
+    try:
+        found = predict_spacing(formula)
+    except StructureError as error:
+        return {"predicted": None, "not_predicted": str(error)}
+    names = ("d001", "d001_sigma", "b", "b_sigma", "d060", "d060_sigma")
+    return {"predicted": {**{name: _plain(getattr(found, name), 5) for name in names}, "notes": list(found.notes)}}
+
+
+def show_predicted(console: Console, formula: SiteFormula) -> None:
+    """One line: predicted spacings, or why there are none."""
+    from rich.markup import escape
+
+    from xrdmica.crystals.spacing import predict_spacing
+    from xrdmica.errors import StructureError
+
+    try:
+        found = predict_spacing(formula)
+    except StructureError as error:
+        console.print(f"no predicted spacing: {escape(str(error))}", highlight=False, soft_wrap=True)
+        return
+    console.print(found.text(), highlight=False, soft_wrap=True)
+    for note in found.notes:
+        console.print(f"note on the prediction: {escape(note)}", highlight=False, soft_wrap=True)
+
+
 def _plain(value: float, digits: int = 4) -> float:
     return round(value, digits) + 0.0
 
@@ -98,6 +132,7 @@ def analysis_record(found: AnalysisFormula) -> dict[str, Any]:
         "anhydrous_total": _plain(found.analysis.anhydrous_total),
         "water_by_difference": _plain(found.water_by_difference),
         "water_of_formula": _plain(found.water_of_formula),
+        **predicted_record(formula),
         "end_members": {name: _plain(share) for name, share in named.shares},
         "reasons": list(named.reasons),
         "flags": list(found.flags),
@@ -135,6 +170,7 @@ def show_analysis(console: Console, found: AnalysisFormula) -> None:
         + f"; total without water {found.analysis.anhydrous_total:.2f} %, water by difference {found.water_by_difference:.2f} %, "
         f"of the formula {found.water_of_formula:.2f} %", highlight=False, soft_wrap=True,
     )  # fmt: skip
+    show_predicted(console, formula)
     for reason in named.reasons:
         console.print(f"because: {escape(reason)}", highlight=False, soft_wrap=True)
     for note in found.notes:

@@ -16,8 +16,8 @@ from xrdmica.chemistry.ions import charge_of
 from xrdmica.errors import StructureError
 
 __all__ = [
-    "INTERLAYER_RADIUS", "OCTAHEDRAL_RADIUS", "TERMS", "PredictedSpacing", "interlayer_radius", "octahedral_radius",
-    "predict_spacing", "predictors",
+    "INTERLAYER_RADIUS", "OCTAHEDRAL_RADIUS", "TERMS", "PredictedSpacing", "octahedral_radius", "predict_spacing", "predicted_b",
+    "predicted_spacing", "predictors",
 ]  # fmt: skip
 
 # Shannon (1976), Acta Crystallographica A32, 751-767: effective ionic radii, six-fold, high spin [angstrom]; the values are
@@ -62,6 +62,18 @@ class PredictedSpacing:
         """b / 6 [angstrom]."""
         return self.b / 6
 
+    @property
+    def d060_sigma(self) -> float:
+        """Standard error of `d060` [angstrom]."""
+        return self.b_sigma / 6
+
+    def text(self) -> str:
+        """One line with every number and its standard error."""
+        return (
+            f"predicted d(001) {self.d001:.3f} ± {self.d001_sigma:.3f} Å, b {self.b:.3f} ± {self.b_sigma:.3f} Å, "
+            f"d(060) {self.d060:.4f} ± {self.d060_sigma:.4f} Å (one standard error)"
+        )
+
 
 def octahedral_radius(formula: SiteFormula) -> float:
     """Mean radius of the octahedral cations [angstrom].
@@ -69,26 +81,24 @@ def octahedral_radius(formula: SiteFormula) -> float:
     Raises
     ------
     StructureError
-        If a cation has no radius here.
+        If a cation has no radius here, or the octahedral site is empty.
     """
     unknown = [ion for ion, n in formula.octahedral.items() if n and ion not in OCTAHEDRAL_RADIUS]
     if unknown:
         raise StructureError(f"no octahedral radius is known for {unknown[0]}", fix="replace it by a similar ion")
     total = formula.site_sum("octahedral")
+    if not total:
+        raise StructureError("the formula has no octahedral cation", fix="give the octahedral site its cations")
     return sum(n * OCTAHEDRAL_RADIUS[ion] for ion, n in formula.octahedral.items()) / total
 
 
-def interlayer_radius(formula: SiteFormula) -> float | None:
-    """Mean radius of the interlayer cations [angstrom], None where there are none."""
-    cations = interlayer_cations(formula)
-    unknown = [ion for ion in cations if ion not in INTERLAYER_RADIUS]
+def _check_interlayer(cations: dict[str, float]) -> None:
+    unknown = [ion for ion, n in cations.items() if n and ion not in INTERLAYER_RADIUS]
     if unknown:
         raise StructureError(
             f"{unknown[0]} between the layers holds water: no spacing follows from the formula",
             fix="ask for a phase of the library, such as smectite or vermiculite, in a state",
         )
-    total = sum(cations.values())
-    return sum(n * INTERLAYER_RADIUS[ion] for ion, n in cations.items()) / total if total else None
 
 
 def predictors(formula: SiteFormula) -> dict[str, float]:
@@ -101,11 +111,12 @@ def predictors(formula: SiteFormula) -> dict[str, float]:
     Returns
     -------
     dict
-        Term -> value: mean octahedral radius [angstrom], tetrahedral Al, Fe2+ and Mn2+, Li, interlayer cations, what these lack
-        of the radius of K [angstrom, summed], F in a layer with interlayer cations, divalent octahedral cations times vacancies.
+        Term -> value per O10(OH,F)2: mean octahedral radius [angstrom], tetrahedral Al, Fe2+ and Mn2+, Li, interlayer cations,
+        what these lack of the radius of K [angstrom, summed], F in a layer with interlayer cations, divalent octahedral
+        cations times vacancies.
     """
-    interlayer_radius(formula)  # refuses hydrated cations
     cations = interlayer_cations(formula)
+    _check_interlayer(cations)
     octahedral = formula.octahedral
     vacant = max(3.0 - formula.site_sum("octahedral"), 0.0)
     filling = min(sum(cations.values()), 1.0)
@@ -166,6 +177,18 @@ def predict_spacing(formula: SiteFormula) -> PredictedSpacing:
         spread = model["residual_sigma"] ** 2 + x @ np.array(model["covariance"]) @ x
         numbers[quantity] = (float(x @ np.array(model["coefficients"])), float(np.sqrt(spread)))
     return PredictedSpacing(*numbers["b"], *numbers["d001"], _outside(formula))
+
+
+def predicted_spacing(formula: SiteFormula) -> tuple[float, float]:
+    """d(001) of one layer and its standard error [angstrom]; see `predict_spacing`."""
+    found = predict_spacing(formula)
+    return found.d001, found.d001_sigma
+
+
+def predicted_b(formula: SiteFormula) -> tuple[float, float]:
+    """b and its standard error [angstrom]; see `predict_spacing`."""
+    found = predict_spacing(formula)
+    return found.b, found.b_sigma
 
 
 def _outside(formula: SiteFormula) -> tuple[str, ...]:

@@ -88,18 +88,31 @@ def fit(cells: tuple[KnownCell, ...], quantity: str) -> dict[str, Any]:
         "covariance": [[round(float(c), 9) for c in row] for row in covariance],
         "residual_sigma": round(variance**0.5, 6),
         "leave_one_out_rms": round(float(np.sqrt(np.mean(leave_one_out(cells, quantity) ** 2))), 6),
+        "leave_one_mineral_out_rms": round(float(np.sqrt(np.mean(leave_one_out(cells, quantity, whole_mineral=True) ** 2))), 6),
         "cells": len(target),
     }
 
 
-def leave_one_out(cells: tuple[KnownCell, ...], quantity: str) -> NDArray[np.float64]:
-    """Error of the prediction of every cell from all the others [angstrom], shape (n,)."""
+def leave_one_out(
+    cells: tuple[KnownCell, ...], quantity: str, *, whole_mineral: bool = False
+) -> NDArray[np.float64]:
+    """Error of the prediction of every cell from all the others [angstrom], shape (n,).
+
+    Parameters
+    ----------
+    cells : tuple of KnownCell
+    quantity : str
+        ``"b"`` or ``"d001"``.
+    whole_mineral : bool
+        Leave out all cells of the same mineral together, so that no twin of the predicted cell takes part in the fit.
+    """
     matrix, target = _system(cells, quantity)
+    label = np.array([cell.name.split()[0] if whole_mineral else str(i) for i, cell in enumerate(cells)])
     errors = np.zeros(len(target))
-    for i in range(len(target)):
-        keep = np.arange(len(target)) != i
+    for out in dict.fromkeys(label.tolist()):
+        keep = label != out
         coefficients, *_ = np.linalg.lstsq(matrix[keep], target[keep], rcond=None)
-        errors[i] = target[i] - matrix[i] @ coefficients
+        errors[~keep] = target[~keep] - matrix[~keep] @ coefficients
     return errors
 
 
