@@ -33,6 +33,7 @@ COMMANDS: dict[str, LazyCommand] = {
     "estimate": LazyCommand("xrdmica.cli.estimate", "Proportions with intervals, and whether the sample swells."),
     "trial": LazyCommand("xrdmica.cli.trial", "How well would this work for my kind of sample? Simulated samples."),
     "batch": LazyCommand("xrdmica.cli.batch", "All samples of a sheet or folder, with tables and figures."),
+    "report": LazyCommand("xrdmica.cli.report", "Pages to read in a browser, from results."),
 }
 
 
