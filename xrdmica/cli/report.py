@@ -52,7 +52,7 @@ def _files(sources: tuple[Path, ...]) -> list[Path]:
             continue
         inside = [path for path in sorted(source.glob("*.json")) if sample_of_file(path) is not None]
         if not inside:
-            raise XrdmicaError(f"{source}: no result file is in this folder", fix="give the folder that `xrdmica batch --out` made")
+            raise XrdmicaError(f"{source}: holds no result file", fix="give the folder that `xrdmica batch --out` made")
         found += inside
     return list(dict.fromkeys(found))
 

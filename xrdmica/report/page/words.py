@@ -46,8 +46,8 @@ def verdict_sentences(result: SampleResult) -> tuple[str, str]:
                 first += f" (95 % interval {_number(s.low95)} to {_number(s.high95)} %)"
     elif s.verdict == "no":
         first = "No swelling layers were found in the sample"
-        if s.high95 is not None:
-            first += f"; if there are any, they are less than {_number(max(s.high95, 0.1))} % of its sheet silicates"
+        if s.high95 is not None and s.high95 >= 1:
+            first += f"; if there are any, they are less than {_number(s.high95)} % of its sheet silicates"
     else:
         first = "These scans cannot tell whether the sample swells"
         if s.measure_next:

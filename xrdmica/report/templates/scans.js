@@ -141,7 +141,7 @@
       if (layout[key]) { hi = Math.max(hi, layout[key].top); floor = Math.min(floor, layout[key].range[0]); reach = hi - floor; }
       var marks = ticks(scale, floor + 0.12 * reach, hi + 0.1 * reach);
       layout[key] = { domain: [cut, head], range: [floor, hi + 0.16 * reach], top: hi, tickvals: marks.at, ticktext: marks.text, gridcolor: rule, zeroline: false, fixedrange: true,
-        linecolor: soft, mirror: true, title: { text: narrow ? "" : "intensity", standoff: 4 } };
+        linecolor: soft, title: { text: narrow ? "" : "intensity", standoff: 4 } };
       if (residual) {
         layout[keyR] = { domain: [foot, cut], range: [-3.2, 3.2], tickvals: [0], ticktext: ["0"], gridcolor: rule, zeroline: true, zerolinecolor: soft, fixedrange: true };
       }
