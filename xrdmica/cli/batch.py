@@ -19,7 +19,7 @@ if TYPE_CHECKING:
 __all__ = ["command"]
 
 
-@click.command(name="batch")
+@click.command(name="batch", epilog="Example: xrdmica batch demo_patterns --out results")
 @click.argument("source", metavar="SHEET_OR_FOLDER", type=click.Path(exists=True, path_type=Path))
 @click.option("--out", required=True, metavar="DIR", type=click.Path(path_type=Path), help="Folder for the results.")
 @options.radiation_option

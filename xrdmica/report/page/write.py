@@ -201,7 +201,7 @@ def write_overview(campaign: Campaign, out: Path) -> Path:
         If a figure cannot be read or the page cannot be written.
     """
     target = _target(out, OVERVIEW_FILE)
-    rows = []
+    rows: list[dict[str, Any]] = []
     for row in campaign.rows:
         groups = list(row.groups.items()) or [(name, weight) for name, weight in row.phases.items()]
         parts = [(g, g, w) for g, w in groups if g != "expandable layers"]
