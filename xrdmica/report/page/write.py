@@ -11,10 +11,10 @@ from xrdmica.errors import XrdmicaError
 from xrdmica.report.campaign import Campaign, CampaignRow
 from xrdmica.report.cautions import GENERAL_CAUTIONS
 from xrdmica.report.files import all_notes, plan_stems, write_text
-from xrdmica.report.page.curves import DARK_COLOURS, plot_data
+from xrdmica.report.page.curves import plot_data
 from xrdmica.report.page.render import plotting_script, render, safe_json
 from xrdmica.report.page.words import ANSWERS, STATUS_WORDS, verdict_sentences
-from xrdmica.report.styles import GROUP_COLOURS, OTHER_COLOUR, phase_styles
+from xrdmica.report.styles import GROUP_COLOURS, phase_styles
 from xrdmica.results import SampleResult
 
 __all__ = ["OVERVIEW_FILE", "PLOTTING_FILE", "sample_page", "write_overview", "write_pages", "write_sample_page"]
@@ -30,25 +30,17 @@ def _target(out: Path, name: str) -> Path:
     return out if out.suffix.lower() in (".html", ".htm") else out / name
 
 
-def _colours(group: str) -> dict[str, str]:
-    light = GROUP_COLOURS.get(group, OTHER_COLOUR)
-    return {"light": light, "dark": DARK_COLOURS.get(light, "#c9ccd0")}
-
-
 def _bars(result: SampleResult) -> list[dict[str, Any]]:
     """Rows of the proportions: every phase that is there or may be, the heaviest first."""
     styles = phase_styles(result)
     rows = []
     shown = [w for w in result.proportions.phases if w.status != "not_detected"]
-    used: dict[str, int] = {}
     for w in sorted(shown, key=lambda w: -(w.weight_percent if w.weight_percent is not None else -1.0)):
-        number = used.get(w.group, 0)
-        used[w.group] = number + 1
         high = w.high95 if w.high95 is not None else w.weight_percent
         rows.append(
             {
                 "weight": w, "status": STATUS_WORDS[w.status], "symbol": styles[w.phase].symbol if w.phase in styles else "",
-                "group_class": _group_class(w.group), "member": number % 4,
+                "group_class": _group_class(w.group),
                 "x": None if w.weight_percent is None else round(_CHART * w.weight_percent / 100, 1),
                 "low": None if w.low95 is None else round(_CHART * max(w.low95, 0.0) / 100, 1),
                 "high": None if high is None or w.low95 is None else round(_CHART * min(high, 100.0) / 100, 1),
