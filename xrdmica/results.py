@@ -2,7 +2,8 @@
 
 from __future__ import annotations
 
-from typing import Literal
+from importlib import import_module
+from typing import Any, Literal
 
 from pydantic import BaseModel, ConfigDict, Field
 
@@ -20,6 +21,17 @@ class Record(BaseModel):
     """Frozen record; unknown keys are an error so that a typing mistake is not lost."""
 
     model_config = ConfigDict(frozen=True, extra="forbid")
+
+
+class Shown(Record):
+    """A record that a notebook shows and that turns into a table; the rendering is loaded when it is asked for."""
+
+    def _repr_html_(self) -> str:
+        return str(import_module("xrdmica.report.notebook").html_of(self))
+
+    def to_dataframe(self) -> Any:
+        """The record as a table (pandas): one row per phase; unknown numbers are missing."""
+        return import_module("xrdmica.report.notebook").dataframe_of(self)
 
 
 class ScanSummary(Record):
@@ -116,7 +128,7 @@ class NextMeasurement(Record):
     outcomes: tuple[Outcome, ...] = ()
 
 
-class Findings(Record):
+class Findings(Shown):
     """What is in the sample, with the evidence."""
 
     sample: str
@@ -189,7 +201,7 @@ class FitWarning(Record):
     value: float | None = None
 
 
-class Proportions(Record):
+class Proportions(Shown):
     """Weight percent with intervals, dry basis (structural OH counts, interlayer water and glycol do not)."""
 
     sample: str
@@ -262,7 +274,7 @@ class Curve(Record):
     marks: tuple[Mark, ...] = ()
 
 
-class SampleResult(Record):
+class SampleResult(Shown):
     """Everything known about one sample: the content of ``<sample>.json``."""
 
     sample: str

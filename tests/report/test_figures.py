@@ -172,7 +172,7 @@ def test_no_curves_and_unknown_suffix_are_told(make_result, full_result: SampleR
 def test_same_figure_same_bytes(make_result) -> None:
     result = make_result(points=80)
     result = result.model_copy(update={"curves": result.curves[:1]})
-    for kind in ("png", "svg"):
+    for kind in ("png", "svg", "pdf"):
         assert figure_bytes(sample_figure(result), kind) == figure_bytes(sample_figure(result), kind)
 
 
@@ -199,3 +199,26 @@ def test_members_of_a_group_differ_by_line(make_result) -> None:
     styles = phase_styles(result.model_copy(update={"curves": (more,), "proportions": both}))
     assert styles["illite"].colour == styles["muscovite"].colour
     assert styles["illite"].line != styles["muscovite"].line
+
+
+def test_axes_go_in_and_come_out(full_result: SampleResult) -> None:
+    from matplotlib.figure import Figure
+
+    from xrdmica.report.figure_panels import draw_difference, draw_scan, draw_spacings
+
+    figure = Figure()
+    upper, lower = figure.subplots(2)
+    upper.set_xlim(3, 35)
+    curve = full_result.curves[0]
+    assert draw_scan(upper, curve, phase_styles(full_result)) is upper
+    assert draw_spacings(upper, Radiation.tube("Cu")) is upper
+    assert draw_difference(lower, curve) is lower
+    assert upper.get_xlim() == (3, 35)
+    assert by_gid(lower, "difference")
+
+
+def test_papers_get_vectors_and_few_type_sizes(figure: Any) -> None:
+    for kind, sign in (("pdf", b"/Subtype /Image"), ("svg", b"<image")):
+        assert sign not in figure_bytes(figure, kind)
+    sizes = {text.get_fontsize() for axes in figure.axes for text in axes.texts if text.get_gid() == "mark"}
+    assert sizes == {7.0}

@@ -20,7 +20,7 @@ __all__ = ["command"]
 _MOST_LINES = 200  # of the table on the screen
 
 
-@click.command(name="batch")
+@click.command(name="batch", epilog="Example: xrdmica batch demo_patterns --out results")
 @click.argument("sources", metavar="SHEET_OR_FOLDER...", nargs=-1, required=True)
 @click.option("--out", metavar="DIR", type=click.Path(path_type=Path), help="Folder for the results.")
 @options.radiation_option

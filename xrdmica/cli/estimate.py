@@ -12,7 +12,7 @@ from xrdmica.cli import options
 __all__ = ["command"]
 
 
-@click.command(name="estimate")
+@click.command(name="estimate", epilog="Example: xrdmica estimate demo_patterns --sample TQ-A --figure talc.pdf")
 @options.paths_argument
 @options.sample_option
 @options.radiation_option

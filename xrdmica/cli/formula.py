@@ -124,7 +124,7 @@ def _csv_text(records: list[dict[str, Any]]) -> str:
 _FILE = click.Path(dir_okay=False, path_type=Path)
 
 
-@click.command(name="formula")
+@click.command(name="formula", epilog="Example: xrdmica formula 'K Mg3 (Al Si3) O10 (OH)2'")
 @click.argument("formulas", metavar="[FORMULA]...", nargs=-1)
 @click.option("--oxides", "oxide_file", metavar="FILE", type=_FILE, help="Table of analyses in weight percent of oxides.")
 @click.option(

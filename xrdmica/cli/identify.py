@@ -11,7 +11,7 @@ from xrdmica.cli import options
 __all__ = ["command"]
 
 
-@click.command(name="identify")
+@click.command(name="identify", epilog="Example: xrdmica identify demo_patterns --sample GB3-02.0")
 @options.paths_argument
 @options.sample_option
 @options.radiation_option

@@ -35,6 +35,7 @@ COMMANDS: dict[str, LazyCommand] = {
     "profile": LazyCommand("xrdmica.cli.profile", "Proportions against depth or another coordinate, as figure and table."),
     "trial": LazyCommand("xrdmica.cli.trial", "How well would this work for my kind of sample? Simulated samples."),
     "batch": LazyCommand("xrdmica.cli.batch", "All samples of a sheet or folder, with tables and figures."),
+    "report": LazyCommand("xrdmica.cli.report", "Pages to read in a browser, from results."),
 }
 
 

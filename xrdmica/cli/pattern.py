@@ -19,7 +19,7 @@ if TYPE_CHECKING:
 __all__ = ["command"]
 
 
-@click.command(name="pattern")
+@click.command(name="pattern", epilog="Example: xrdmica pattern talc")
 @click.argument("subject", metavar="PHASE|FORMULA")
 @click.option("--mount", type=click.Choice(["oriented", "random"]), default="oriented", show_default=True, help="Kind of mount.")
 @click.option("--radiation", metavar="TUBE", default="Cu", show_default=True, help="Cu, Co, Fe, Cr, Mo or a wavelength in Å.")

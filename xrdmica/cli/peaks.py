@@ -24,7 +24,7 @@ if TYPE_CHECKING:
 
 __all__ = ["command"]
 
-@click.command("peaks")
+@click.command("peaks", epilog="Example: xrdmica peaks demo_patterns/TQ-A_AD.xye")
 @click.argument("files", nargs=-1, required=True, metavar="FILE...", type=click.Path(path_type=Path))
 @radiation_option
 @click.option(

@@ -201,7 +201,7 @@ def _group(ctx: click.Context, parameter: click.Parameter, value: str | None) ->
 _FILE = click.Path(dir_okay=False, path_type=Path)
 
 
-@click.command(name="phases")
+@click.command(name="phases", epilog="Example: xrdmica phases --near 9.6")
 @click.option("--group", metavar="GROUP", callback=_group, help="Only this group, such as 'true mica' or companion.")
 @click.option(
     "--near", metavar="D", type=click.FloatRange(3, 60),

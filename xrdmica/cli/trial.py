@@ -18,7 +18,7 @@ if TYPE_CHECKING:
 __all__ = ["command"]
 
 
-@click.command(name="trial")
+@click.command(name="trial", epilog="Example: xrdmica trial --samples 2 --seed 1 --out trial")
 @click.argument("specification", required=False, metavar="[FILE]", type=click.Path(path_type=Path))
 @click.option("--out", required=True, metavar="DIR", type=click.Path(path_type=Path), help="Folder for what is found.")
 @click.option("--samples", default=100, show_default=True, type=click.IntRange(1, 1_000_000), help="Samples to simulate.")
