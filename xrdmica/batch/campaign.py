@@ -95,7 +95,7 @@ def quality_flags(result: SampleResult) -> tuple[str, ...]:
         flags.append("parameter at its limit")
     if result.chemistry is not None and result.chemistry.agrees is False:
         flags.append("chemistry disagrees")
-    flags += [warning.kind for warning in result.proportions.warnings]
+    flags += [warning.kind for warning in result.proportions.warnings if warning.kind != "driver"]
     return tuple(sys.intern(flag) for flag in dict.fromkeys(flags))
 
 

@@ -12,9 +12,6 @@ from xrdmica.batch.store import replace_text
 
 __all__ = ["write_record"]
 
-# no part of the analysis of a measured sample draws random numbers; simulations carry their seeds in their own records
-_SEEDS: dict[str, int] = {}
-
 
 class _Ended(Protocol):
     entry: Any
@@ -49,7 +46,8 @@ def write_record(out: Path, tasks: Sequence[_Ended], shared: Circumstances, orig
         "analysis": shared.analysis,
         "settings": settings,
         "settings_files_sha256": shared.files_sha256,
-        "seeds": _SEEDS,
+        # only a bootstrap draws random numbers; trials carry their seeds in their own records
+        "seeds": {"bootstrap": settings["seed"]} if settings.get("bootstrap") else {},
         **origin,
     }
     text = json.dumps(head, indent=2, ensure_ascii=False)
