@@ -24,6 +24,11 @@ class FakeSettings:
     phases: tuple[str, ...] = ()
     instrument: str | None = None
     curves: bool = True
+    width_calibration: str | None = None
+    formulas: tuple[tuple[str, str], ...] = ()
+    joint_chemistry: bool = False
+    bootstrap: int = 0
+    seed: int = 0
 
 
 @dataclass(frozen=True)
@@ -64,7 +69,7 @@ def groups_of(phases: Sequence[PhaseWeight]) -> tuple[GroupWeight, ...]:
     return tuple(GroupWeight(group=group, status="present", weight_percent=weight) for group, weight in sums.items())
 
 
-def analyse(sample: Sample, settings: FakeSettings) -> SampleResult:
+def analyse(sample: Sample, settings: FakeSettings, on_draw: object = None) -> SampleResult:
     """The name of the sample says what happens to it."""
     if "bad" in sample.name:
         raise FitError(f"sample {sample.name}: nothing to fit", fix="measure it again")
