@@ -49,8 +49,8 @@ def test_two_cores_against_one() -> None:
     """By the clock, which tells something on an idle machine only, and by processor times: two workers must not cost more than
     one per sample, and this process must have next to nothing to do."""
     entry = demo(1)[0]
-    jobs = [Job(k, entry, Settings(), analyse_sample, "", False, False) for k in range(12)]
-    clock_one, one, _ = passed(1, jobs[:6])
+    jobs = [Job(k, entry, Settings(), analyse_sample, "", False, False) for k in range(8)]
+    clock_one, one, _ = passed(1, jobs[:4])
     clock_two, two, own = passed(2, jobs)
     gain = 2 * one / (two + own)
     print(f"\nby the clock {clock_one / clock_two:.2f} times ({1 / clock_two:.2f} samples/s), by processor times {gain:.2f} "
@@ -74,13 +74,13 @@ def test_overhead_outside_the_analysis(tmp_path: Path, benchmark: Any) -> None:
     for figures in (False, True):
         spent[0] = 0.0
         begin = time.perf_counter()
-        assert len(list(run_batch(demo(6), tmp_path / str(figures), analyse=timed, figures=figures))) == 6
+        assert len(list(run_batch(demo(4), tmp_path / str(figures), analyse=timed, figures=figures))) == 4
         shares[figures] = (time.perf_counter() - begin - spent[0]) / spent[0]
     begin = time.perf_counter()
-    assert len(list(run_batch(demo(6), tmp_path / "True", analyse=timed))) == 6
+    assert len(list(run_batch(demo(4), tmp_path / "True", analyse=timed))) == 4
     again = time.perf_counter() - begin
     benchmark.extra_info["overhead percent"] = round(100 * shares[False], 1)
-    print(f"\n{6 / spent[0]:.2f} samples/s in the analysis on one core; overhead {100 * shares[False]:.1f} %, with figures "
+    print(f"\n{4 / spent[0]:.2f} samples/s in the analysis on one core; overhead {100 * shares[False]:.1f} %, with figures "
           f"{100 * shares[True]:.1f} %; a run with nothing to do takes {100 * again / spent[0]:.1f} % of it")  # fmt: skip
     assert shares[False] < 0.10
-    benchmark.pedantic(lambda: list(run_batch(demo(6), tmp_path / "True", analyse=timed)), rounds=3)
+    benchmark.pedantic(lambda: list(run_batch(demo(4), tmp_path / "True", analyse=timed)), rounds=2)
