@@ -100,13 +100,17 @@ def phase_styles(result: SampleResult) -> dict[str, PhaseStyle]:
     shown = {phase for curve in result.curves for phase in (*curve.contributions, *(m.phase for m in curve.marks))}
     weights = {p.phase: p for p in result.proportions.phases}
     findings = {f.phase: f for f in result.findings.phases}
-    used: dict[str, int] = {}
+    used: dict[str, list[Any]] = {}
     out: dict[str, PhaseStyle] = {}
-    for phase in sorted(shown):
+    heaviest = sorted(sorted(shown), key=lambda p: -(weights[p].weight_percent or 0.0) if p in weights else 0.0)
+    # neighbours differ by colour and by line, so that neither is needed to tell them apart; so do members of a group
+    for number, phase in enumerate(heaviest):
         record = weights.get(phase) or findings.get(phase)
         name, group = (record.name, record.group) if record else (phase, "")
-        line = LINES[used.get(group, 0) % len(LINES)]
-        used[group] = used.get(group, 0) + 1
+        turned = [LINES[(number + k) % len(LINES)] for k in range(len(LINES))]
+        taken = used.setdefault(group, [])
+        line = next((choice for choice in turned if choice not in taken), turned[0])
+        taken.append(line)
         symbol = _symbol(phase, name)
         if symbol in {style.symbol for style in out.values()}:
             symbol = one_line(name, 9)
@@ -119,8 +123,7 @@ def phase_styles(result: SampleResult) -> dict[str, PhaseStyle]:
         if record is not None and record.status in ("possible", "trace"):
             legend += f", {record.status}"
         out[phase] = PhaseStyle(phase, name, symbol, GROUP_COLOURS.get(group, OTHER_COLOUR), line, legend)
-    heaviest = sorted(out, key=lambda p: -(weights[p].weight_percent or 0.0) if p in weights else 0.0)
-    return {phase: out[phase] for phase in heaviest}
+    return out
 
 
 def tube_of(scan: ScanSummary | None) -> Radiation | None:
