@@ -194,8 +194,8 @@ def contrast(one: str, other: str) -> float:
 def test_contrast_of_text_and_lines() -> None:
     assert contrast("#000000", "#ffffff") == pytest.approx(21)
     css = asset("page.css")
-    texts = re.findall(r":root(?:\[data-theme=dark\])?\{([^}]*)\}", css)
-    blocks = [dict(re.findall(r"--([\w]+):(#[0-9a-f]{3,6})", text)) for text in texts]
+    texts = re.findall(r":root(?:\[data-theme=dark\])?\s*\{([^}]*)\}", css)
+    blocks = [dict(re.findall(r"--([\w]+):\s*(#[0-9a-f]{3,6})", text)) for text in texts]
     light = {**blocks[0], **next(b for b in blocks if b.get("g1") == "#1d4f91" and "paper" not in b)}
     dark = {**next(b for b in blocks if b.get("paper") == "#14181b"), **next(b for b in blocks if b.get("g1") == "#7fb0f5")}
     for theme in (light, dark):
