@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import os
 import shutil
+import signal
 import sys
 import tempfile
 from collections.abc import Iterator
@@ -12,6 +13,11 @@ from pathlib import Path
 import pytest
 
 REPOSITORY = Path(__file__).resolve().parent.parent
+
+
+if signal.getsignal(signal.SIGINT) is signal.SIG_IGN:
+    # a shell's background job ignores Ctrl-C and its children inherit that; the tests send it to theirs
+    signal.signal(signal.SIGINT, signal.default_int_handler)
 
 
 @pytest.fixture(scope="session")
