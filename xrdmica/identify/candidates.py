@@ -13,10 +13,10 @@ from xrdmica.matching.model import spacing_limits
 from xrdmica.matching.prepare import Prepared
 from xrdmica.scans.peaks import Peak
 
-__all__ = ["Hopeful", "hopefuls", "line_tolerance", "match_peak"]
+__all__ = ["BASE_TOLERANCE", "Hopeful", "hopefuls", "line_tolerance", "match_peak"]
 
 _STRONG = 0.6  # share of the strongest line from which a line must not be missing
-_BASE_TOLERANCE = 0.16  # degree: 0.3 mm of displacement and reading error
+BASE_TOLERANCE = 0.16  # degree: 0.3 mm of displacement and reading error
 _COMPANION_STRONG = 0.35
 _FRACTIONS = 4
 _MOST = 0.6
@@ -55,7 +55,7 @@ class Hopeful:
 def line_tolerance(component: Component, line: ExpectedLine, item: Prepared) -> float:
     """How far from `line` a peak may stand and still be that line [degree]: displacement plus the range of the spacing."""
     if not component.states:
-        return _BASE_TOLERANCE
+        return BASE_TOLERANCE
     if component.fraction is not None:
         return 0.6
     low, high = spacing_limits(component)[0]
@@ -64,7 +64,7 @@ def line_tolerance(component: Component, line: ExpectedLine, item: Prepared) -> 
     reach = max(high - middle, middle - low) / middle
     theta = np.radians(line.two_theta / 2)
     slack = float(np.degrees(2 * np.tan(theta) * reach)) if tube else 0.0
-    return _BASE_TOLERANCE + slack
+    return BASE_TOLERANCE + slack
 
 
 def match_peak(peaks: Sequence[Peak], two_theta: float, tolerance: float) -> Peak | None:
@@ -113,7 +113,7 @@ def _consider(phase: Phase, item: Prepared) -> tuple[tuple[Component, ...], tupl
 def _companion_meets(lines: Sequence[ExpectedLine], item: Prepared) -> bool:
     """A companion needs its strongest line, and half of its strong ones."""
     strong = sorted((line for line in lines if line.share >= _COMPANION_STRONG), key=lambda line: -line.share)
-    found = [match_peak(item.peaks, line.two_theta, _BASE_TOLERANCE) is not None for line in strong]
+    found = [match_peak(item.peaks, line.two_theta, BASE_TOLERANCE) is not None for line in strong]
     return bool(found) and found[0] and sum(found) >= len(found) / 2
 
 

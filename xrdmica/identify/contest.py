@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import replace
 from itertools import combinations
 
 from xrdmica.crystals.library import Phase, load_phase
@@ -13,7 +12,9 @@ from xrdmica.identify.candidates import Hopeful, hopefuls
 from xrdmica.identify.evidence import ledger_for
 from xrdmica.identify.search import KEEP, RARE_FACTOR, Arena, Selection, build_arena, inherited, refined, select, settle, swapped
 from xrdmica.identify.series import SERIES_SAME, blended, siblings
+from xrdmica.identify.sets import among, chi_square_of, held_as_is, neighbours, part
 from xrdmica.identify.strangers import with_strangers
+from xrdmica.identify.visible import only_visible
 from xrdmica.matching.linear import tied_fit
 from xrdmica.matching.model import Candidate
 from xrdmica.matching.prepare import Prepared, prepare
@@ -22,17 +23,13 @@ from xrdmica.scans.scan import Sample
 __all__ = ["compare", "rivals"]
 
 SWAP = 100.0  # rise of chi-square below which another phase would do as well
-_NEIGHBOUR = 0.45  # angstrom
 _TRIALS = 3
 _GOOD = 1.1  # reduced chi-square below which nothing is left to explain
 # Composition and form factors change calculated heights by some percent, which no count cures: a rival that explains all
 # but this share of what a phase explains is not told from it.
 _SAME = 0.025
-# A look-alike of a kept phase that is needed for less than this share of its twin's lines only mends their heights.
-_MEND, _MEND_RARE = 0.1, 0.25
 _FAR = 0.1  # mm of displacement by which a first choice of phases may have bent the scans
 _HOPEFUL = 0.4  # share of what several phases explain that one may miss before it is refined
-_BADLY = 500.0  # rise of chi-square from which a phase without a line of its own stays
 
 
 def compare(sample: Sample, phases: Sequence[Phase], instrument: Instrument) -> tuple[tuple[Hopeful, ...], Arena, Selection]:
@@ -55,7 +52,7 @@ def compare(sample: Sample, phases: Sequence[Phase], instrument: Instrument) -> 
         arena, chosen = _placed_again(arena, chosen, candidates, prepared_first)
     labels = sample.labels
     arena, chosen = _one_for_several(arena, chosen)
-    chosen = _only_visible(arena, _usual_first(arena, _simplified(arena, chosen), labels), labels)
+    chosen = only_visible(arena, _usual_first(arena, _simplified(arena, chosen), labels), labels)
     return considered, *_fair_contest(*_completed(arena, chosen, labels), labels)
 
 
@@ -69,7 +66,7 @@ def _placed_again(
         starts.append((build_arena(candidates, prepared), 10))
     found = []
     for start, rounds in starts:
-        views, changed = refined(start, _held(start, chosen.active), rounds=rounds)
+        views, changed = refined(start, held_as_is(start, chosen.active), rounds=rounds)
         again = build_arena(changed, views)
         found.append((again, select(again)))
     return min(found, key=lambda pair: pair[1].fit.chi_square + KEEP * len(pair[1].active) * pair[1].noise)
@@ -78,50 +75,7 @@ def _placed_again(
 def _without_rare(arena: Arena) -> Arena:
     """The arena without rare phases: what is usual has the first say in placing the scans."""
     keep = [i for i, c in enumerate(arena.candidates) if load_phase(c.phase).occurrence == "common"]
-    return _part(arena, keep)
-
-
-def _part(arena: Arena, keep: Sequence[int]) -> Arena:
-    return Arena(
-        arena.prepared,
-        tuple(arena.candidates[i] for i in keep),
-        tuple(a[:, list(keep)] for a in arena.columns),
-        {f: tuple(s.subset(keep) for s in systems) for f, systems in arena.systems.items()},
-    )
-
-
-def _among(arena: Arena, places: Sequence[int]) -> Selection:
-    """The selection from some candidates only, with places of the whole arena."""
-    part = select(_part(arena, places))
-    return replace(
-        part,
-        active=tuple(places[a] for a in part.active),
-        need={places[a]: need for a, need in part.need.items()},
-    )
-
-
-def _held(arena: Arena, active: Sequence[int]) -> Selection:
-    """A fixed set of candidates with its fit, nothing tested."""
-    fit = tied_fit([s.subset(active) for s in arena.systems[1.0]])
-    noise = max(1.0, fit.chi_square / max(arena.points, 1))
-    return Selection(tuple(active), 1.0, fit, {}, noise)
-
-
-def _neighbours(arena: Arena, one: int, two: int) -> bool:
-    """Whether two candidates have their first lines at nearly the same place in some scan."""
-    pairs = zip(arena.candidates[one].components, arena.candidates[two].components, strict=True)
-    return any(
-        a is not None and b is not None and bool(a.spacings and b.spacings) and abs(a.spacings[0] - b.spacings[0]) < _NEIGHBOUR
-        for a, b in pairs
-    )
-
-
-def _twins(arena: Arena, one: int, two: int) -> bool:
-    """Whether two candidates are look-alikes by their files, or stand at the same place and one of them is rare."""
-    first, second = load_phase(arena.candidates[one].phase), load_phase(arena.candidates[two].phase)
-    listed = any(x.id == second.id for x in first.look_alikes) or any(x.id == first.id for x in second.look_alikes)
-    rare = "rare" in (first.occurrence, second.occurrence)
-    return (listed or rare) and _neighbours(arena, one, two)
+    return part(arena, keep)
 
 
 def _better_neighbours(arena: Arena, active: tuple[int, ...]) -> tuple[Arena, tuple[int, ...]]:
@@ -139,19 +93,19 @@ def _better_neighbours(arena: Arena, active: tuple[int, ...]) -> tuple[Arena, tu
     arena : Arena
     active : tuple of int
     """
-    held = _held(arena, active)
+    held = held_as_is(arena, active)
     trials = []
     for place in active:
         for other in range(len(arena.candidates)):
-            if other not in active and _neighbours(arena, place, other):
+            if other not in active and neighbours(arena, place, other):
                 swap = tuple(other if a == place else a for a in active)
-                trials.append((_held(arena, swap).fit.chi_square, swap))
+                trials.append((held_as_is(arena, swap).fit.chi_square, swap))
     for _, swap in sorted(trials)[:_TRIALS]:
         if held.noise < _GOOD:
             break
-        prepared, candidates = refined(arena, _held(arena, swap), rounds=5)
+        prepared, candidates = refined(arena, held_as_is(arena, swap), rounds=5)
         trial = build_arena(candidates, prepared)
-        result = _held(trial, swap)
+        result = held_as_is(trial, swap)
         if result.fit.chi_square < held.fit.chi_square:
             return _better_neighbours(trial, swap)
     return arena, active
@@ -161,15 +115,15 @@ def _simplified(arena: Arena, selection: Selection) -> Selection:
     """Put one phase in place of two neighbours where that costs next to nothing."""
     others = [i for i in range(len(arena.candidates)) if i not in selection.active]
     for one, two in combinations(selection.active, 2):
-        if not _neighbours(arena, one, two):
+        if not neighbours(arena, one, two):
             continue
         for place in others:
-            if not _neighbours(arena, one, place):
+            if not neighbours(arena, one, place):
                 continue
             active = [a for a in selection.active if a not in (one, two)] + [place]
             fit = tied_fit([s.subset(active) for s in arena.systems[selection.factor]])
             if fit.chi_square - selection.fit.chi_square < KEEP * selection.noise:
-                return _simplified(arena, _among(arena, active))
+                return _simplified(arena, among(arena, active))
     return selection
 
 
@@ -190,33 +144,27 @@ def _one_for_several(arena: Arena, selection: Selection, tries: int = 3) -> tupl
     single = {a for a in range(len(arena.candidates)) if _single_lines(arena, a)}
     trials = []
     for place in single:
-        near = [a for a in selection.active if a in single and (a == place or _neighbours(arena, a, place))]
+        near = [a for a in selection.active if a in single and (a == place or neighbours(arena, a, place))]
         name = arena.candidates[place].phase
         family = any(siblings(name, arena.candidates[a].phase) for a in near)
         if len(near) < 2 or (place in near and not family and load_phase(name).occurrence == "common"):
             continue
         rest = [a for a in selection.active if a not in near]
-        lost = _chi_square_of(arena, selection, rest)
+        lost = chi_square_of(arena, selection, rest)
         active = (*rest, place)
         start = arena if not family else _with_candidate(arena, place, blended(arena, selection, place, near))
-        rise = _held(start, active).fit.chi_square - selection.fit.chi_square
+        rise = held_as_is(start, active).fit.chi_square - selection.fit.chi_square
         if rise < _HOPEFUL * (lost - selection.fit.chi_square):
             # two members of a series can always do a little better than one whose composition is only about right
             allowed = max(KEEP * selection.noise, SERIES_SAME * (lost - selection.fit.chi_square) if family else 0.0)
             trials.append((rise, active, start, allowed))
     for _, active, start, allowed in sorted(trials, key=lambda trial: trial[0])[:tries]:
-        prepared, candidates = refined(start, _held(start, active), rounds=6)
+        prepared, candidates = refined(start, held_as_is(start, active), rounds=6)
         fresh = build_arena(candidates, prepared)
-        held = _held(fresh, active)
+        held = held_as_is(fresh, active)
         if held.fit.chi_square < selection.fit.chi_square + allowed:
-            return _one_for_several(fresh, _among(fresh, active), tries)
+            return _one_for_several(fresh, among(fresh, active), tries)
     return arena, selection
-
-
-def _chi_square_of(arena: Arena, selection: Selection, active: Sequence[int]) -> float:
-    """Chi-square of some candidates alone; of the background alone without any."""
-    systems = arena.systems[selection.factor]
-    return tied_fit([s.subset(active) for s in systems]).chi_square if active else sum(s.energy for s in systems)
 
 
 def _with_candidate(arena: Arena, place: int, candidate: Candidate) -> Arena:
@@ -241,7 +189,7 @@ def _usual_first(arena: Arena, selection: Selection, labels: Sequence[str]) -> S
         costs = {i: swapped(arena, selection, place, i) for i, c in enumerate(arena.candidates) if c.phase in common}
         if costs:
             best = min(costs, key=lambda i: costs[i])
-            return _usual_first(arena, _among(arena, [*(a for a in selection.active if a != place), best]), labels)
+            return _usual_first(arena, among(arena, [*(a for a in selection.active if a != place), best]), labels)
     return selection
 
 
@@ -258,9 +206,9 @@ def _completed(arena: Arena, selection: Selection, labels: Sequence[str], tries:
     best = max(gains, key=lambda a: gains[a], default=None)
     if best is None or gains[best] < 2 * KEEP * selection.noise:
         return arena, selection
-    prepared, candidates = refined(arena, _among(arena, [*selection.active, best]), rounds=5)
+    prepared, candidates = refined(arena, among(arena, [*selection.active, best]), rounds=5)
     fuller = build_arena(candidates, prepared)
-    chosen = _only_visible(fuller, _simplified(fuller, select(fuller)), labels)
+    chosen = only_visible(fuller, _simplified(fuller, select(fuller)), labels)
     if chosen.fit.chi_square < selection.fit.chi_square - KEEP * selection.noise:
         return _completed(fuller, chosen, labels, tries - 1)
     return arena, selection
@@ -290,55 +238,15 @@ def _fair_contest(arena: Arena, selection: Selection, labels: Sequence[str], tri
                 return arena, selection
             tries -= 1
             rival = next(i for i, c in enumerate(arena.candidates) if c.phase == name)
-            trial = _among(arena, [*(a for a in selection.active if a != place), rival])
+            trial = among(arena, [*(a for a in selection.active if a != place), rival])
             if rival not in trial.active:
                 continue
             prepared, candidates = refined(arena, trial, rounds=5)
             better = build_arena(candidates, prepared)
             chosen = select(better)
             if chosen.fit.chi_square < selection.fit.chi_square - 1.0 and len(chosen.active) <= len(selection.active):
-                return _fair_contest(better, _only_visible(better, chosen, labels), labels, tries)
+                return _fair_contest(better, only_visible(better, chosen, labels), labels, tries)
     return arena, selection
-
-
-def _only_visible(arena: Arena, selection: Selection, labels: Sequence[str]) -> Selection:
-    """Drop what only fills in under the lines of other phases: it cannot be claimed, and the rest must do without it."""
-    powder = all(item.scan.mount == "random" for item in arena.prepared)
-    mending = _mending(arena, selection)
-    if mending:
-        return _only_visible(arena, _among(arena, [a for a in selection.active if a not in mending]), labels)
-    hidden = [a for a in selection.active if _unclaimable(arena, selection, a, labels, powder)]
-    if not hidden:
-        return selection
-    weakest = min(hidden, key=lambda a: float(selection.need[a].sum()))
-    return _only_visible(arena, _among(arena, [a for a in selection.active if a != weakest]), labels)
-
-
-def _mending(arena: Arena, selection: Selection) -> set[int]:
-    """Kept candidates that stand at the place of a look-alike and only mend its calculated heights."""
-    out = set()
-    for one, two in combinations(selection.active, 2):
-        weak, strong = sorted((one, two), key=lambda a: float(selection.need[a].sum()))
-        if strong in out or weak in out or not _twins(arena, weak, strong):
-            continue
-        rare = load_phase(arena.candidates[weak].phase).occurrence == "rare"
-        if float(selection.need[weak].sum()) < (_MEND_RARE if rare else _MEND) * float(selection.need[strong].sum()):
-            out.add(weak)
-    return out
-
-
-def _unclaimable(arena: Arena, selection: Selection, place: int, labels: Sequence[str], powder: bool) -> bool:
-    """Whether a kept candidate has nothing to show: no line of its own, more missing than found, no first line in a powder.
-
-    One that is needed badly stays all the same: two phases may share every line and still both be there.
-    """
-    ledger = ledger_for(arena, selection, place, labels)
-    if ledger.clear_lines == 0:
-        rare = load_phase(arena.candidates[place].phase).occurrence == "rare"
-        return powder or rare or float(selection.need[place].sum()) < _BADLY * selection.noise
-    if not load_phase(arena.candidates[place].phase).is_sheet_silicate:
-        return False
-    return ledger.missing_lines >= ledger.clear_lines or (powder and not ledger.first_line)
 
 
 def rivals(
@@ -352,12 +260,12 @@ def rivals(
         if other in selection.active:
             continue
         name = arena.candidates[other].phase
-        if not anywhere and name not in look_alikes and not _neighbours(arena, place, other):
+        if not anywhere and name not in look_alikes and not neighbours(arena, place, other):
             continue
         # a rival must also do most of what the kept one does, or everything would be one on a poor fit
         need = float(selection.need[place].sum())
         limit = max(min(SWAP * selection.noise, 0.5 * need), _SAME * need)
-        if anywhere and _neighbours(arena, place, other):
+        if anywhere and neighbours(arena, place, other):
             # with so little of its own to show, whatever explains a fair part of the same line will do as well
             limit = 0.7 * need
         if swapped(arena, selection, place, other, hopeless=10 * limit) < limit:

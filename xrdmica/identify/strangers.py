@@ -7,15 +7,17 @@ from collections.abc import Sequence
 import numpy as np
 from numpy.typing import NDArray
 
-from xrdmica.diffraction.columns import cross_lines
+from xrdmica.diffraction.columns import ExpectedLine, cross_lines
 from xrdmica.diffraction.peak_shape import pseudo_voigt
-from xrdmica.identify.candidates import Hopeful, line_tolerance
+from xrdmica.identify.candidates import BASE_TOLERANCE, Hopeful, line_tolerance
 from xrdmica.matching.prepare import Prepared
 from xrdmica.scans.peaks import Peak
 
 __all__ = ["with_strangers"]
 
-_CLAIM = 0.2  # share of its strongest line from which a phase may claim a peak
+_CLAIM = 0.2  # share of its strongest line from which a sheet silicate may claim a peak
+_COMPANION_CLAIM = 0.05  # the second line of quartz has a fifth of the first, and that one lies under mica's third order
+_OUT_OF_PROPORTION = 3.0  # times what a companion's strongest line allows; grains are coarse and their heights uneven
 _WIDEST = 1.2  # degree: broader humps are left to the phases and the background
 
 
@@ -26,14 +28,32 @@ def _claimed(peak: Peak, hopeful: Sequence[Hopeful], index: int, item: Prepared)
         if one.phase.stack is not None and peak.fwhm > 0.25:
             return True
         for option, lines in zip(one.options[index], one.lines[index], strict=True):
+            if not option.states:
+                if _companion_claims(peak, lines, item):
+                    return True
+                continue
             for line in lines:
                 if line.share >= _CLAIM and abs(line.two_theta - peak.two_theta) <= line_tolerance(option, line, item):
                     return True
-            if item.scan.mount == "random" and option.states:
+            if item.scan.mount == "random":
                 crossed = cross_lines(option, item.view)
                 if crossed is not None and _near_strong(peak, crossed.d_spacing, crossed.structure_factor_squared, item):
                     return True
     return False
+
+
+def _companion_claims(peak: Peak, lines: Sequence[ExpectedLine], item: Prepared) -> bool:
+    """Whether a companion has a line there that may be as high, judged by what stands at its strongest line."""
+    strongest = max(lines, key=lambda line: line.share, default=None)
+    if strongest is None:
+        return False
+    top = sum(p.height for p in item.peaks if abs(p.two_theta - strongest.two_theta) <= BASE_TOLERANCE)
+    return any(
+        line.share >= _COMPANION_CLAIM
+        and abs(line.two_theta - peak.two_theta) <= BASE_TOLERANCE
+        and peak.height <= _OUT_OF_PROPORTION * line.share * top
+        for line in lines
+    )
 
 
 def _near_strong(peak: Peak, d_spacing: NDArray[np.float64], squared: NDArray[np.float64], item: Prepared) -> bool:
