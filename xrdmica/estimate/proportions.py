@@ -21,7 +21,7 @@ from xrdmica.estimate.rows import group_rows, hidden_share, percent, phase_rows,
 from xrdmica.estimate.shares import Shares, expandable_share, normalise
 from xrdmica.estimate.standard import added_standard, standard_place, whole_sample
 from xrdmica.estimate.uncertainty import detection_limits, fit_covariance, model_shifts
-from xrdmica.identify.decide import Examination, examine
+from xrdmica.identify.decide import Examination, examination_of, examine
 from xrdmica.matching.model import Candidate
 from xrdmica.matching.solve import Fitted
 from xrdmica.results import (
@@ -355,7 +355,5 @@ def estimate(sample: Sample, findings: Findings | None = None, instrument: Instr
         Dry basis; intervals hold fit covariance and what the scans do not fix (orientation, composition, form factors,
         background).
     """
-    phases = None
-    if findings is not None:
-        phases = [load_phase(f.phase) for f in findings.phases if f.status != "not_detected"]
-    return estimate_examined(examine(sample, phases, instrument)).proportions
+    examination = examine(sample, None, instrument) if findings is None else examination_of(sample, findings, instrument)
+    return estimate_examined(examination).proportions

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections import deque
 from collections.abc import Sequence
 from dataclasses import dataclass
 
@@ -20,7 +21,7 @@ from xrdmica.matching.prepare import Prepared
 from xrdmica.results import Alternative, Findings, PhaseFinding, Status
 from xrdmica.scans.scan import Sample
 
-__all__ = ["Examination", "examine", "identify"]
+__all__ = ["Examination", "examination_of", "examine", "identify"]
 
 _TRACE = 0.025  # share of the sheet silicates below which a phase is called a trace
 # layers whose spacing depends on what is between them are named only by what a treatment does to them (common practice)
@@ -46,6 +47,10 @@ class Examination:
     arena: Arena
     selection: Selection
     findings: Findings
+
+
+# identify and estimate are called one after the other on the same sample: the comparison need not be made twice
+_recent: deque[Examination] = deque(maxlen=4)
 
 
 def _convincing(ledger: Ledger, conditions: int, doubtful: bool) -> bool:
@@ -189,4 +194,28 @@ def identify(sample: Sample, phases: Sequence[Phase] | None = None, instrument: 
     Findings
         Every phase considered, with status, reason, evidence, alternatives, and what to measure next.
     """
-    return examine(sample, phases, instrument).findings
+    examination = examine(sample, phases, instrument)
+    _recent.append(examination)
+    return examination.findings
+
+
+def examination_of(sample: Sample, findings: Findings, instrument: Instrument | None = None) -> Examination:
+    """The comparison that findings came from, made again among their phases where it is no longer at hand.
+
+    Parameters
+    ----------
+    sample : Sample
+    findings : Findings
+        From `identify` of that sample, or of an earlier session.
+    instrument : Instrument, optional
+
+    Returns
+    -------
+    Examination
+    """
+    wanted = instrument or Instrument()
+    for one in tuple(_recent):
+        grids = [item.view.grid for item in one.arena.prepared]
+        if one.findings is findings and one.sample is sample and all(grid.instrument == wanted for grid in grids):
+            return one
+    return examine(sample, [load_phase(f.phase) for f in findings.phases if f.status != "not_detected"], instrument)

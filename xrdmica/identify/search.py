@@ -110,18 +110,27 @@ def _options(hopeful: Hopeful, prepared: Sequence[Prepared]) -> list[tuple[Compo
     return out
 
 
-def _first_guess(options: Sequence[tuple[Component, ...]], item: Prepared) -> list[NDArray[np.float64]]:
-    """Strength in the data of every option of every phase in one scan, all competing."""
+def _first_guess(options: Sequence[tuple[Component, ...]], stacks: Sequence[bool], item: Prepared) -> list[NDArray[np.float64]]:
+    """Strength in one scan of every option of every phase, all competing.
+
+    A stack with next to no second layer imitates a pure phase: pure phases compete once more without the stacks.
+    """
     flat = [component for phase in options for component in phase]
     if not flat:
         return [np.zeros(0) for _ in options]
-    columns = component_columns(flat, item.view)
-    equations = system(columns, item.scan.counts, item.weight, item.basis)
+    equations = system(component_columns(flat, item.view), item.scan.counts, item.weight, item.basis)
+    pure = [place for place, component in enumerate(flat) if component.fraction is None]
+    among_all, alone = _strengths(equations), np.zeros(len(flat))
+    alone[pure] = _strengths(equations.subset(pure))
+    edges = pairwise(np.cumsum([0, *(len(phase) for phase in options)]))
+    return [(among_all if stack else alone)[a:b] for stack, (a, b) in zip(stacks, edges, strict=True)]
+
+
+def _strengths(equations: ScanSystem) -> NDArray[np.float64]:
+    """Height of each column in the best fit; one that got nothing still ranks by how well it alone would do."""
     size = np.sqrt(np.maximum(np.diag(equations.gram), 1e-300))
     strength = nonnegative(equations.gram, equations.moment) * size
-    # an option that got nothing still ranks by how well it alone would do
-    score = strength + 1e-6 * np.maximum(equations.moment, 0.0) / size
-    return [score[a:b] for a, b in pairwise(np.cumsum([0, *(len(phase) for phase in options)]))]
+    return np.asarray(strength + 1e-6 * np.maximum(equations.moment, 0.0) / size)
 
 
 def _mean(pairs: Sequence[tuple[float, float]]) -> float | None:
@@ -170,13 +179,8 @@ def settle(hopeful: Sequence[Hopeful], prepared: Sequence[Prepared]) -> tuple[Ca
     """
     plausible = [one for one in hopeful if one.plausible]
     options = [_options(one, prepared) for one in plausible]
-    # a stack with next to no second layer imitates a pure phase: pure phases choose their states without stacks about
-    pure = [[() if one.phase.stack else found for found in choice] for one, choice in zip(plausible, options, strict=True)]
-    scores = []
-    for k, item in enumerate(prepared):
-        alone = _first_guess([one[k] for one in pure], item)
-        among_all = _first_guess([one[k] for one in options], item)
-        scores.append([b if one.phase.stack else a for one, a, b in zip(plausible, alone, among_all, strict=True)])
+    stacks = [one.phase.stack is not None for one in plausible]
+    scores = [_first_guess([one[k] for one in options], stacks, item) for k, item in enumerate(prepared)]
     return tuple(
         Candidate(one.phase.id, _choose(options[j], [scores[k][j] for k in range(len(prepared))]))
         for j, one in enumerate(plausible)
@@ -209,8 +213,14 @@ def build_arena(candidates: Sequence[Candidate], prepared: Sequence[Prepared]) -
     return Arena(tuple(prepared), tuple(candidates), columns, systems)
 
 
-def _best_fit(arena: Arena, active: Sequence[int], factors: Sequence[float] = _SPREAD_FACTORS) -> tuple[float, TiedFit]:
-    fits = [(factor, tied_fit([s.subset(active) for s in arena.systems[factor]])) for factor in factors]
+def _best_fit(
+    arena: Arena, active: Sequence[int], factors: Sequence[float] = _SPREAD_FACTORS, scales: NDArray[np.float64] | None = None
+) -> tuple[float, TiedFit]:
+    """Orientation spread and fit that suit a set best; `scales` are those of a set much like it."""
+    fits = []
+    for factor in factors:
+        fits.append((factor, tied_fit([s.subset(active) for s in arena.systems[factor]], scales)))
+        scales = fits[-1][1].scales
     return min(fits, key=lambda pair: pair[1].chi_square)
 
 
@@ -246,7 +256,7 @@ def select(arena: Arena, *, coarse: bool = False) -> Selection:
         need = {}
         for place in active:
             rest = [a for a in active if a != place]
-            without = tied_fit([s.subset(rest) for s in arena.systems[factor]], rounds=4)
+            without = tied_fit([s.subset(rest) for s in arena.systems[factor]], fit.scales)
             need[place] = without.chi_squares - fit.chi_squares
         weakest = min(active, key=lambda a: float(need[a].sum()) / _threshold(arena, a), default=None)
         if weakest is None or float(need[weakest].sum()) > _threshold(arena, weakest) * noise * strictness:
@@ -268,12 +278,13 @@ def swapped(arena: Arena, selection: Selection, out: int, into: int, hopeless: f
         Rise at the present orientation spread from which others are not tried.
     """
     active = [*(a for a in selection.active if a not in (out, into)), into]
-    _, here = _best_fit(arena, active, (selection.factor,))
+    _, here = _best_fit(arena, active, (selection.factor,), selection.fit.scales)
     rise = here.chi_square - selection.fit.chi_square
     if rise > hopeless:
         return rise
-    _, fit = _best_fit(arena, active)
-    return fit.chi_square - selection.fit.chi_square
+    others = [factor for factor in _SPREAD_FACTORS if factor != selection.factor]
+    _, fit = _best_fit(arena, active, others, here.scales)
+    return min(here, fit, key=lambda one: one.chi_square).chi_square - selection.fit.chi_square
 
 
 def refined(arena: Arena, selection: Selection, rounds: int = 7) -> tuple[tuple[Prepared, ...], tuple[Candidate, ...]]:

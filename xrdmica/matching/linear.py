@@ -11,6 +11,7 @@ from numpy.typing import NDArray
 __all__ = ["ScanSystem", "TiedFit", "nonnegative", "project", "project_vector", "system", "tied_fit"]
 
 FloatArray = NDArray[np.float64]
+_SETTLED = 1e-4  # change relative to the largest scale at which the alternation ends; chi-square follows its square
 _RIDGE = 1e-9  # keeps the factor of columns that are all but equal
 
 
@@ -113,10 +114,10 @@ def nonnegative(gram: FloatArray, moment: FloatArray) -> FloatArray:
     return np.asarray(amounts / size, dtype=float)
 
 
-def _best_scales(systems: Sequence[ScanSystem], amounts: FloatArray) -> FloatArray:
+def _best_scales(grams: FloatArray, moments: FloatArray, amounts: FloatArray) -> FloatArray:
     """Scale of each scan for given amounts; a scan in which they show nothing gets a small one."""
-    seen = np.array([float(amounts @ s.gram @ amounts) for s in systems])
-    best = np.array([float(amounts @ s.moment) for s in systems])
+    seen = grams @ amounts @ amounts
+    best = moments @ amounts
     scales = np.divide(best, seen, out=np.zeros_like(best), where=seen > 0)
     return np.asarray(np.maximum(scales, 1e-3 * max(float(scales.max()), 1e-30)))
 
@@ -166,14 +167,16 @@ def tied_fit(systems: Sequence[ScanSystem], scales: FloatArray | None = None, ro
     if scales is None:
         scales = np.array([nonnegative(s.gram, s.moment).sum() for s in systems])
         scales = np.maximum(scales, 1e-3 * max(float(scales.max()), 1e-30))
+    grams = np.array([s.gram for s in systems])
+    moments = np.array([s.moment for s in systems])
     amounts = np.zeros(size)
     for _ in range(rounds if len(systems) > 1 else 1):
-        gram = sum((k * k * s.gram for k, s in zip(scales, systems, strict=True)), np.zeros((size, size)))
-        moment = sum((k * s.moment for k, s in zip(scales, systems, strict=True)), np.zeros(size))
-        amounts = nonnegative(gram, moment)
+        amounts = nonnegative(np.tensordot(scales * scales, grams, 1), scales @ moments)
         if not amounts.any():
             break
-        scales = _best_scales(systems, amounts)
+        before, scales = scales, _best_scales(grams, moments, amounts)
+        if np.abs(scales - before).max() < _SETTLED * scales.max():
+            break
     total = float(amounts.sum())
     if total > 0:
         amounts, scales = amounts / total, scales * total
