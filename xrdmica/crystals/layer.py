@@ -56,6 +56,16 @@ class Layer:
         return all(abs(rest) < 1e-9 for rest in content.values())
 
 
+    @cached_property
+    def symmetric_when_stacked(self) -> bool:
+        """Whether a crystal of this layer alone has a mirror at the layer's middle: every atom has a twin, whole spacings off."""
+        kinds = np.array(self.ions)
+        apart = (self.z[:, None] + self.z) / self.spacing
+        twin = (np.abs(apart - np.rint(apart)) * self.spacing < 1e-4) & (kinds[:, None] == kinds)
+        here = (np.abs(self.z[:, None] - self.z) < 1e-4) & (kinds[:, None] == kinds)
+        return bool(np.allclose(twin @ self.counts, here @ self.counts, rtol=0, atol=1e-9))
+
+
 def formula_with(phase: Phase, exchanges: Mapping[str, float]) -> SiteFormula:
     """The phase's formula with its exchange variables set.
 

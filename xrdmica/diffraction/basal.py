@@ -50,6 +50,7 @@ def layer_amplitude(layer: Layer, s: NDArray[np.float64], radiation: Radiation, 
     return total
 
 
+@lru_cache(maxsize=512)
 def smooth_amplitude(layer: Layer, grid: PatternGrid, model: FormFactors = "ionic", *, upside_down: bool = False) -> ComplexArray:
     """`layer_amplitude` on a grid, by cubic interpolation from coarser knots: an amplitude is far smoother than a scan is fine.
 
@@ -79,6 +80,10 @@ def smooth_amplitude(layer: Layer, grid: PatternGrid, model: FormFactors = "ioni
 @lru_cache(maxsize=1024)
 def _ion_at_knots(ion: str, grid: PatternGrid, model: FormFactors) -> ComplexArray:
     return np.asarray(form_factor(ion, grid.knots.s, model) + anomalous(ion, grid.radiation.energy_ev), dtype=np.complex128)
+
+
+def _squared(amplitude: ComplexArray) -> NDArray[np.float64]:
+    return np.asarray(amplitude.real**2 + amplitude.imag**2)
 
 
 def basal_intensity(
@@ -112,10 +117,10 @@ def basal_intensity(
         (w_i ~ S_i M_i area_i; per whole reflection this is the ZMV rule).
     """
     amplitude = smooth_amplitude(layer, grid, model)
-    squared = np.abs(amplitude) ** 2
+    squared = _squared(amplitude)
     if not layer.centrosymmetric:
         # layers lie either way up in a mount, and with absorption 00l and 00-l differ
-        squared = (squared + np.abs(smooth_amplitude(layer, grid, model, upside_down=True)) ** 2) / 2
+        squared = (squared + _squared(smooth_amplitude(layer, grid, model, upside_down=True))) / 2
     phi = interference(grid.s, layer.spacing, mean_layers, spacing_disorder, heights)
     return squared * phi / (layer.molar_mass * layer.area)
 

@@ -199,20 +199,25 @@ def components_for(phase: Phase, treatment: Treatment) -> tuple[Component, ...]:
     return tuple(out)
 
 
-@lru_cache(maxsize=2048)
 def component_layers(component: Component) -> tuple[Layer, ...]:
     """The layer of a component; two one-sided layers for an interstratified one; none for a companion."""
     phase = load_phase(component.phase)
     if not component.states:
         return ()
     if phase.stack is None:
-        state = _state_by_id(phase, component.states[0])
-        return (build_layer(phase, state, exchanges=dict(component.exchanges), spacing=component.spacings[0]),)
+        return (_layer(phase.id, component.states[0], tuple(sorted(component.exchanges)), component.spacings[0]),)
     kinds = [load_phase(phase.stack.first), load_phase(phase.stack.second)]
     return tuple(
-        build_layer(kind, _state_by_id(kind, state), exchanges=_usual_exchanges(kind), spacing=spacing, one_sided=True)
+        _layer(kind.id, state, tuple(sorted(_usual_exchanges(kind).items())), spacing, one_sided=True)
         for kind, state, spacing in zip(kinds, component.states, component.spacings, strict=True)
     )
+
+
+@lru_cache(maxsize=2048)
+def _layer(name: str, state: str, exchanges: tuple[tuple[str, float], ...], spacing: float, *, one_sided: bool = False) -> Layer:
+    """One object per layer, whatever its stacks are like, so that its amplitude is found again."""
+    phase = load_phase(name)
+    return build_layer(phase, _state_by_id(phase, state), exchanges=dict(exchanges), spacing=spacing, one_sided=one_sided)
 
 
 @lru_cache(maxsize=1024)

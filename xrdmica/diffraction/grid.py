@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 from functools import cached_property, lru_cache
+from typing import TypeVar
 
 import numpy as np
 from numpy.typing import NDArray
@@ -22,7 +23,7 @@ from xrdmica.radiation import Radiation
 
 __all__ = ["Knots", "PatternGrid", "Sampling", "make_grid", "on_scan", "sample_points"]
 
-ComplexArray = NDArray[np.complex128]
+Curve = TypeVar("Curve", NDArray[np.float64], NDArray[np.complex128])
 _GRID_STEP = 0.02  # degree: fine enough for the sharpest basal line of a laboratory instrument
 _MARGIN = 1.2  # degree beyond the scan, so that tails and shifts at its ends are there
 _SMOOTH_STEP = 0.0015  # 1/angstrom: 40 points to the fastest wave of a 17 angstrom layer, spline error below 1e-5
@@ -44,7 +45,7 @@ class Knots:
     index: NDArray[np.int64]
     weight: NDArray[np.float64]
 
-    def read(self, values: ComplexArray) -> ComplexArray:
+    def read(self, values: Curve) -> Curve:
         """Values at the knots (q,) on the fine grid (g,)."""
         return np.asarray((values[self.index] * self.weight).sum(axis=0))
 
@@ -53,8 +54,16 @@ class Knots:
         """Knots for a rising fine grid."""
         count = max(int(np.ceil((s[-1] - s[0]) / _SMOOTH_STEP)) + 4, 6)
         knots = np.linspace(s[0], s[-1], count)
-        position = (s - s[0]) / (knots[1] - knots[0])
-        start = np.clip(position.astype(np.int64) - 1, 0, count - 4)
+        return cls._at(knots, (s - s[0]) / (knots[1] - knots[0]))
+
+    @classmethod
+    def every(cls, step: int, s: NDArray[np.float64]) -> Knots:
+        """Knots at every so manieth point of a fine grid that is even in angle."""
+        return cls._at(s[::step], np.arange(s.size) / step)
+
+    @classmethod
+    def _at(cls, knots: NDArray[np.float64], position: NDArray[np.float64]) -> Knots:
+        start = np.clip(position.astype(np.int64) - 1, 0, knots.size - 4)
         x = position - start
         weight = np.array([
             -(x - 1) * (x - 2) * (x - 3) / 6, x * (x - 2) * (x - 3) / 2, -x * (x - 1) * (x - 3) / 2, x * (x - 1) * (x - 2) / 6,
@@ -91,9 +100,18 @@ class PatternGrid:
         """Coarse points for amplitudes."""
         return Knots.below(self.s)
 
+    def every(self, step: int) -> Knots:
+        """Every so manieth point, for curves without sharp lines."""
+        return _every(self, step)
+
     def factor(self, orientation_spread: float) -> NDArray[np.float64]:
         """Lorentz-polarisation and mount factor on the grid, shape (g,)."""
         return _factor(self, orientation_spread)
+
+
+@lru_cache(maxsize=64)
+def _every(grid: PatternGrid, step: int) -> Knots:
+    return Knots.every(step, grid.s)
 
 
 @lru_cache(maxsize=128)

@@ -126,15 +126,16 @@ def interference(
     ndarray, shape (n,)
         Averages to 1 over a period; the mean number of layers (mass-weighted) at a Bragg position.
     """
-    phase = 4 * np.pi * spacing * s
     if spacing_disorder <= 0 and heights is None:
         table = _interference_table(round(float(mean_layers), 6))
-        place = np.abs(np.remainder(phase + np.pi, 2 * np.pi) - np.pi) * ((table.size - 1) / np.pi)
+        turns = (2 * spacing) * s
+        turns -= np.rint(turns)
+        place = np.abs(turns) * (2 * (table.size - 1))
         below = np.minimum(place.astype(np.int64), table.size - 2)
         return np.asarray(table[below] + (place - below) * (table[below + 1] - table[below]))
     chosen = lognormal_heights(round(float(mean_layers), 6)) if heights is None else heights
     pairs = chosen.pair_counts / chosen.pair_counts[0]
-    step = np.exp(1j * phase - (4 * np.pi * s * spacing_disorder) ** 2 / 2)
+    step = np.exp(4j * np.pi * spacing * s - (4 * np.pi * s * spacing_disorder) ** 2 / 2)
     total = np.zeros(s.shape, dtype=complex)
     for weight in pairs[:0:-1]:  # Horner's rule in the phase step
         total = (total + weight) * step

@@ -31,7 +31,7 @@ __all__ = [
 ComplexArray = NDArray[np.complex128]
 RealArray = NDArray[np.float64]
 _COARSER = 3
-_SHARP = 45.0  # mean layers times coarsening: beyond this a spline would cut the tops of lines
+_SHARP = 30.0  # mean layers times coarsening: beyond this interpolation would cut the tops of lines
 _SAME_EITHER_WAY = 1e-6
 
 
@@ -119,6 +119,8 @@ def _by_horner(of_state: ComplexArray, step: ComplexArray, p: RealArray, pairs: 
 @lru_cache(maxsize=512)
 def _differs_upside_down(layer: Layer, radiation: Radiation, model: FormFactors) -> bool:
     """Whether a crystal of this layer alone scatters differently from its two sides, which only absorption brings about."""
+    if layer.symmetric_when_stacked:
+        return False
     s = np.arange(1, 5) / (2 * layer.spacing)
     up, down = (np.abs(layer_amplitude(layer, side * s, radiation, model)) ** 2 for side in (1, -1))
     return bool(np.abs(up - down).max() > _SAME_EITHER_WAY * up.max())
@@ -155,12 +157,9 @@ def stack_intensity(
     ndarray, shape (g,)
         Stacks of kinds without a centre of symmetry (1:1 layers) count half with either side up.
     """
-    from scipy.interpolate import CubicSpline
-
     # short stacks of two kinds have no sharp lines: a third of the points carries them
     coarser = min(_COARSER, max(int(_SHARP / mean_layers), 1))
-    chosen = np.unique(np.append(np.arange(0, grid.s.size, coarser), grid.s.size - 1))
-    s = grid.s[chosen]
+    s = grid.s[::coarser]
     spacings = np.array([layer.spacing for layer in layers])
     areas = np.array([layer.area for layer in layers])
     heights = lognormal_heights(round(float(mean_layers), 6)) if heights is None else heights
@@ -168,12 +167,12 @@ def stack_intensity(
     total = np.zeros(s.size)
     for upside_down in sides:
         # per unit area: kinds that lie on each other have the same lateral extent, not the same number of formula units
-        found = [smooth_amplitude(layer, grid, model, upside_down=upside_down)[chosen] for layer in layers]
+        found = [smooth_amplitude(layer, grid, model, upside_down=upside_down)[::coarser] for layer in layers]
         if upside_down:
             # the stack turned over is the stack at -s; conjugated, the phases of the spacings stay as they are
             found = [amplitude.conj() for amplitude in found]
         amplitudes = np.array(found) / areas[:, None]
         total += stack_interference(amplitudes, spacings, s, junctions, heights, spacing_disorder) / len(sides)
     mass_per_area = float(junctions.layer_shares @ (np.array([layer.molar_mass for layer in layers]) / areas))
-    fine = total if s.size == grid.s.size else CubicSpline(s, total)(grid.s)
+    fine = total if coarser == 1 else grid.every(coarser).read(total)
     return np.asarray(fine / mass_per_area)
