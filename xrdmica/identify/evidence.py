@@ -72,9 +72,16 @@ class LineReading:
         return self.found and self.own >= _CLEAR
 
     @property
+    def covered(self) -> bool:
+        """Whether it lies under a line that is mostly another phase's, whose own misfit says nothing about this one."""
+        return self.own < _CLEAR and self.peak is not None
+
+    @property
     def missing(self) -> bool:
         """Whether it should be seen and is not."""
-        return not self.found and self.seen < 0.3 and self.significance * (1 - self.seen) > 2 * _MEASURABLE
+        if self.found or self.covered:
+            return False
+        return self.seen < 0.3 and self.significance * (1 - self.seen) > 2 * _MEASURABLE
 
 
 @dataclass(frozen=True)
@@ -166,6 +173,9 @@ def _as_evidence(reading: LineReading, labels: Sequence[str], name: str) -> Evid
     if reading.missing:
         text = f"{called} of {name} expected at {line.d_spacing:.3f} Å with {reading.significance:.0f} sigma is not there"
         return Evidence(kind="missing line", text=text, weight=-round(weight, 2), **common)
+    if reading.covered and not reading.found:
+        text = f"{called} of {name} expected at {line.d_spacing:.3f} Å lies under a line of other phases and cannot be judged"
+        return Evidence(kind="overlap", text=text, weight=0.0, **common)
     seen = f"found at {reading.spacing:.3f} Å" if reading.spacing is not None else "found as part of a wider line"
     text = f"{called} {seen}, expected {line.d_spacing:.3f} Å, height {100 * max(reading.seen, 0):.0f} % of the calculated"
     if reading.own >= _CLEAR:
@@ -257,9 +267,10 @@ def ledger_for(arena: Arena, selection: Selection, place: int, labels: Sequence[
                 readings.append(reading)
     behaviour, moved = _behaviour(readings, arena, place, labels)
     clear = {r.order for r in readings if r.clear}
-    least = _SHARED if load_phase(candidate.phase).is_sheet_silicate else _SHARED_COMPANION
-    shared = {r.order for r in readings if r.found and r.own >= least} - clear
-    lines = [_as_evidence(r, labels, name) for r in readings if r.found or r.missing]
+    plates = load_phase(candidate.phase).is_sheet_silicate
+    least = _SHARED if plates else _SHARED_COMPANION
+    shared = {r.order for r in readings if (r.found or (r.covered and not plates)) and r.own >= least} - clear
+    lines = [_as_evidence(r, labels, name) for r in readings if r.found or r.missing or r.covered]
     need = selection.need[place]
     rise = f"leaving it out raises chi-square by {need.sum():.0f}"
     fit = Evidence(kind="fit", text=rise, weight=round(float(np.clip(np.sqrt(max(need.sum(), 0)) / 10, 0, 3)), 2))
