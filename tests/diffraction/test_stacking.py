@@ -11,7 +11,7 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from xrdmica.crystals.layer import Layer
-from xrdmica.diffraction.basal import basal_intensity
+from xrdmica.diffraction.basal import basal_intensity, layer_amplitude
 from xrdmica.diffraction.grid import PatternGrid
 from xrdmica.diffraction.stack_heights import StackHeights, interference, lognormal_heights
 from xrdmica.diffraction.stacking import (
@@ -22,6 +22,7 @@ from xrdmica.diffraction.stacking import (
     two_kind_junctions,
 )
 from xrdmica.errors import StructureError
+from xrdmica.radiation import Radiation
 
 S = np.linspace(0.011, 0.31, 83)
 HEIGHTS = StackHeights(np.array([1, 2, 3, 5]), np.array([0.1, 0.3, 0.4, 0.2]))
@@ -193,3 +194,27 @@ def test_intensity_is_never_negative(
 def test_shares_outside_the_limits_are_refused(share: float) -> None:
     with pytest.raises(StructureError):
         two_kind_junctions(share, 0)
+
+
+@pytest.mark.parametrize("mean_layers", [3.0, 8.0, 14.0, 25.0])
+def test_few_points_carry_a_stack_as_well_as_all(
+    mean_layers: float, layer_of: Callable[..., Layer], copper_grid: PatternGrid, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    layers = [layer_of("illite", one_sided=True), layer_of("smectite", "glycol_2", one_sided=True)]
+    quick = stack_intensity(layers, two_kind_junctions(0.85, 1), copper_grid, mean_layers=mean_layers)
+    monkeypatch.setattr("xrdmica.diffraction.stacking._COARSER", 1)
+    every = stack_intensity(layers, two_kind_junctions(0.85, 1), copper_grid, mean_layers=mean_layers)
+    assert np.abs(quick - every).max() < 2e-3 * every.max()
+
+
+@pytest.mark.parametrize(("phase", "mirror"), [("illite", True), ("smectite", True), ("talc", True), ("kaolinite", False)])
+@pytest.mark.parametrize("one_sided", [False, True])
+def test_stacked_alone_2_1_layers_have_a_mirror_and_1_1_layers_have_none(
+    phase: str, mirror: bool, one_sided: bool, layer_of: Callable[..., Layer]
+) -> None:
+    layer = layer_of(phase, one_sided=one_sided)
+    assert layer.symmetric_when_stacked is mirror
+    # the same from the amplitudes of a crystal, whose structure factors are then equal from both sides
+    s = np.arange(1, 8) / (2 * layer.spacing)
+    up, down = (np.abs(layer_amplitude(layer, side * s, Radiation.parse("Co"))) for side in (1, -1))
+    assert bool(np.allclose(up, down, rtol=1e-9)) is mirror

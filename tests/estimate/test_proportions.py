@@ -6,6 +6,7 @@ import pytest
 
 from tests.simulated import make_sample
 from xrdmica.estimate.proportions import estimate
+from xrdmica.identify.decide import identify
 from xrdmica.results import Proportions
 
 
@@ -75,3 +76,18 @@ def test_single_phases_come_out_as_nearly_all(phase: str) -> None:
     row = next(p for p in found.phases if p.phase == phase)
     assert row.weight_percent is not None
     assert row.weight_percent >= 97.0
+
+
+def test_estimate_goes_on_from_the_comparison_that_identify_made(monkeypatch: pytest.MonkeyPatch) -> None:
+    sample = make_sample({"illite": 60, "kaolinite": 40}, ("air_dried",), seed=21)
+    findings = identify(sample)
+    at_once = estimate(sample)
+    monkeypatch.setattr("xrdmica.identify.decide.examine", lambda *_: pytest.fail("the comparison was made again"))
+    assert estimate(sample, findings) == at_once
+
+
+def test_findings_of_an_earlier_session_are_taken_too() -> None:
+    sample = make_sample({"illite": 60, "kaolinite": 40}, ("air_dried",), seed=21)
+    kept = type(identify(sample)).model_validate_json(identify(sample).model_dump_json())
+    rows = {p.phase: p.weight_percent for p in estimate(sample, kept).phases}
+    assert rows["kaolinite"] == pytest.approx({p.phase: p.weight_percent for p in estimate(sample).phases}["kaolinite"], abs=2)

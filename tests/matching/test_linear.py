@@ -64,3 +64,18 @@ def test_chi_square_from_normal_equations_is_that_of_the_residual() -> None:
     amounts = np.array([0.2, 0.5, 0.1])
     residual = project_vector(counts - columns @ amounts, weight, basis)
     assert equations.chi_square(amounts) == pytest.approx(float(residual @ residual), rel=1e-9)
+
+
+@settings(max_examples=40, deadline=None)
+@given(st.integers(0, 10_000), st.integers(2, 5))
+def test_alternation_that_stops_early_is_as_good_as_a_long_one(seed: int, scans: int) -> None:
+    rng = np.random.default_rng(seed)
+    truth = rng.uniform(0.1, 1, 3)
+    systems = []
+    for scale in rng.uniform(0.2, 3, scans):
+        columns = rng.random((200, 3))
+        counts = 100 * scale * columns @ truth + rng.normal(size=200)
+        systems.append(system(columns, counts, np.ones(200), np.zeros((200, 0))))
+    settled = tied_fit(systems, rounds=50)
+    again = tied_fit(systems, settled.scales, rounds=200)
+    assert settled.chi_square - again.chi_square < 1e-3 * again.chi_square + 0.1

@@ -60,9 +60,10 @@ class Layer:
     def symmetric_when_stacked(self) -> bool:
         """Whether a crystal of this layer alone has a mirror at the layer's middle: every atom has a twin, whole spacings off."""
         kinds = np.array(self.ions)
-        apart = (self.z[:, None] + self.z) / self.spacing
-        twin = (np.abs(apart - np.rint(apart)) * self.spacing < 1e-4) & (kinds[:, None] == kinds)
-        here = (np.abs(self.z[:, None] - self.z) < 1e-4) & (kinds[:, None] == kinds)
+        here, twin = (
+            (np.abs(gap - self.spacing * np.rint(gap / self.spacing)) < 1e-4) & (kinds[:, None] == kinds)
+            for gap in (self.z[:, None] - self.z, self.z[:, None] + self.z)
+        )
         return bool(np.allclose(twin @ self.counts, here @ self.counts, rtol=0, atol=1e-9))
 
 
