@@ -62,11 +62,16 @@ def test_version() -> None:
     assert done.stdout.startswith("xrdmica ")
 
 
-@pytest.mark.parametrize("arguments", [["nonsense"], ["batch"], ["estimate", "x.xy", "--radiation", "Unobtainium"]])
+@pytest.mark.parametrize(
+    "arguments",
+    [["nonsense"], ["batch"], ["identify"], ["identify", "x", "--colour"], ["estimate", "x.xy", "--radiation", "Unobtainium"]],
+)
 def test_wrong_use_is_a_sentence(arguments: list[str]) -> None:
     done = python("-m", "xrdmica", *arguments)
     assert done.returncode == 2
-    assert "Error: " in done.stderr
+    assert len(done.stderr.splitlines()) == 1
+    assert done.stderr.startswith("xrdmica: ")
+    assert "--help`" in done.stderr
     assert "Traceback" not in done.stderr
     assert done.stdout == ""
 

@@ -82,6 +82,9 @@ class LazyGroup(click.Group):
             sys.stdout.flush()
         except XrdmicaError as error:
             raise _Sentence(str(error)) from error
+        except click.UsageError as error:
+            used = (error.ctx or ctx).command_path
+            raise _Sentence(f"{error.format_message().rstrip('.')}: see `{used} --help`") from error
         except KeyboardInterrupt:
             click.echo("xrdmica: stopped by the user; what was finished is kept", err=True)
             ctx.exit(130)

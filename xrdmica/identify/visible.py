@@ -35,16 +35,17 @@ def only_visible(arena: Arena, selection: Selection, labels: Sequence[str]) -> S
 
 def _mending(arena: Arena, selection: Selection) -> set[int]:
     """Kept candidates that stand at the place of a look-alike and only mend its calculated heights."""
-    out = set()
+    out: set[int] = set()
+    needed: set[int] = set()
     for one, two in combinations(selection.active, 2):
         weak, strong = sorted((one, two), key=lambda a: float(selection.need[a].sum()))
-        if strong in out or weak in out or not twins(arena, weak, strong):
+        if strong in out or weak in out or weak in needed or not twins(arena, weak, strong):
             continue
         rare = load_phase(arena.candidates[weak].phase).occurrence == "rare"
         if float(selection.need[weak].sum()) >= (_MEND_RARE if rare else _MEND) * float(selection.need[strong].sum()):
             continue
-        if rare or not _needed_whatever_the_composition(arena, selection, weak):
-            out.add(weak)
+        kept = not rare and _needed_whatever_the_composition(arena, selection, weak)
+        (needed if kept else out).add(weak)
     return out
 
 
